@@ -1,0 +1,1 @@
+"""Obligations proved: kernel, moves, search, refutation."""
