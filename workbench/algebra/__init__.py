@@ -1,0 +1,1 @@
+"""Terms, their exact normal form, and their evaluation."""

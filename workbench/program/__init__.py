@@ -1,0 +1,1 @@
+"""Priced programs: what runs, and what must be proved."""

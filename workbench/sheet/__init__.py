@@ -1,0 +1,1 @@
+"""The sheet language: text to tree and back."""
