@@ -35,7 +35,8 @@ def facts(rng: random.Random, names: list[str], count: int) -> list[Polynomial]:
     point = {v: i * 7 % 5 + 1 for i, v in enumerate(names)}  # satisfies them all
     found: list[Polynomial] = [{(v,): 1} for v in names]
     while len(found) < count:
-        fact: Polynomial = {(v,): rng.choice([-3, -2, -1, -1, 1, 1, 1, 2]) for v in rng.sample(names, rng.choice([1, 2, 2, 3]))}
+        chosen = rng.sample(names, rng.choice([1, 2, 2, 3]))
+        fact: Polynomial = {(v,): rng.choice([-3, -2, -1, -1, 1, 1, 1, 2]) for v in chosen}
         fact[()] = rng.randint(-2, 4)
         if sum(c * (point[m[0]] if m else 1) for m, c in fact.items()) >= 0:
             found.append(fact)
@@ -55,7 +56,7 @@ def system(seed: int, size: tuple[int, int, int], constant: int, support: int) -
         factor = rng.randint(1, 4)
         for monomial, coefficient in chosen.items():
             goal[monomial] = goal.get(monomial, 0) - factor * coefficient
-    return [Row(p) for p in [*products, goal]]  # type: ignore[arg-type]
+    return [Row(p) for p in [*products, goal]]
 
 
 def measure(size: tuple[int, int, int], constant: int, support: int) -> str:
@@ -76,7 +77,8 @@ def measure(size: tuple[int, int, int], constant: int, support: int) -> str:
         times.append(best * 1000)
     monomials = len({m for row in rows for m in row.coefficients})
     said = ", ".join(f"{count} {answer}" for answer, count in answers.items() if count)
-    return f"{len(rows):5} {monomials:9} {support:8} {constant:8}   {statistics.median(times):8.2f} {max(times):8.2f}   {said}"
+    figures = f"{statistics.median(times):8.2f} {max(times):8.2f}"
+    return f"{len(rows):5} {monomials:9} {support:8} {constant:8}   {figures}   {said}"
 
 
 def main() -> None:

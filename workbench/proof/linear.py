@@ -19,7 +19,7 @@ from dataclasses import dataclass
 from fractions import Fraction
 from math import gcd, lcm
 from time import monotonic
-from typing import Final, TypeAlias
+from typing import Any, Final, TypeAlias
 
 from workbench.errors import UllageError
 
@@ -45,7 +45,7 @@ class WrongCombination(UllageError):
 class Row:
     """Σ coefficient·monomial >= 0; > 0 where strict; = 0 where equation. The constant stands under CONSTANT."""
 
-    coefficients: Mapping[Hashable, int | Fraction]
+    coefficients: Mapping[Any, int | Fraction]  # the monomials: anything hashable
     strict: bool = False
     equation: bool = False
 
