@@ -12,6 +12,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Literal, TypeAlias
 
 from workbench.algebra.normal import Algebra
@@ -30,7 +31,7 @@ from workbench.algebra.polynomial import (
     scaled,
     times,
 )
-from workbench.algebra.terms import Rational, Term, app
+from workbench.algebra.terms import Rational, Sort, Term, app
 from workbench.errors import UllageError
 from workbench.proof.laws import Law
 
@@ -63,7 +64,7 @@ class Known:
 class State:
     """What is known on one branch. Every change makes a new state; rows keep their number for good."""
 
-    __slots__ = ("algebra", "rows", "pending", "images", "rests", "next_row", "fresh")
+    __slots__ = ("algebra", "rows", "pending", "images", "rests", "next_row")
 
     def __init__(self, algebra: Algebra) -> None:
         self.algebra = algebra
@@ -72,7 +73,6 @@ class State:
         self.images: dict[Atom, Poly] = {}  # atom -> what it equals here; no key occurs in an image
         self.rests: dict[Atom, Dependencies] = {}
         self.next_row = 0
-        self.fresh = 0
 
     def copy(self) -> State:
         other = State(self.algebra)
@@ -81,7 +81,6 @@ class State:
         other.images = dict(self.images)
         other.rests = dict(self.rests)
         other.next_row = self.next_row
-        other.fresh = self.fresh
         return other
 
     # ---------------------------------------------------------- knowing more (in place, on a copy)
@@ -117,9 +116,11 @@ class State:
             (atom,) = atoms
             slope, offset = rest.terms.get(((atom, 1),)), rest.terms.get(UNIT, 0)
             if atom.idempotent and slope is not None:
-                value = -offset / slope if isinstance(offset, int) and offset % slope else -offset // slope
+                value = Fraction(-offset) / slope
                 if value in (0, 1):
                     return self._decided({atom: value == 1}, k.deps)
+                self._add_row(Row(UNITY, "=", k.deps))  # an indicator is 0 or 1
+                return {}
         self.pending.append(k)
         return {}
 
@@ -173,9 +174,16 @@ class State:
         if row is None or slope is None or atom.loose:
             raise NotProved("a definition needs an equation with the atom alone in one term")
         rest = minus(row.poly, scaled(of_atom(atom), slope))
-        image = scaled(rest, -1 / _fraction(slope))
+        image = scaled(rest, Fraction(-1) / slope)
+        return self._with_image(atom, image, row.deps)
+
+    def _with_image(self, atom: Atom, image: Poly, deps: Dependencies) -> State:
+        """The atom equals the image. What its sort said of its sign is kept as a row."""
         other = self.copy()
-        other.know(other._replace({atom: (image, row.deps)}))
+        changed = other._replace({atom: (image, deps)})
+        if atom.nonneg and not image.nonneg:
+            other._add_row(Row(image, ">" if atom.positive else ">=", deps))
+        other.know(changed)
         return other
 
     def shift(self, number: int, atom: Atom) -> State:
@@ -188,11 +196,42 @@ class State:
         bound = minus(of_atom(atom), row.poly)
         if not bound.is_integer:
             raise NotProved("a shift needs an integer bound")
-        other = self.copy()
-        other.fresh += 1
-        above = self.algebra.variable(f"@{other.fresh}", "nat")
-        other.know(other._replace({atom: (plus(bound, above), row.deps)}))
-        return other
+        above = self._fresh_name("nat")
+        return self._with_image(atom, plus(bound, of_atom(above)), row.deps)
+
+    def _fresh_name(self, sort: Sort) -> Atom:
+        """A name that stands nowhere on this branch: as many images as there are, none of their keys is ever used again."""
+        return self.algebra.variable_atom(f"@{len(self.images) + 1}", sort)
+
+    def rename(self, p: Poly, atom: Atom) -> State:
+        """p = c*atom + rest with c = 1 or -1 and the atom nowhere in the rest: for u = p, the atom is c*(u - rest)."""
+        slope = p.coefficient(atom)
+        if slope not in (1, -1) or atom.loose or atom in self.images or not p.deep.isdisjoint(self.images):
+            raise NotProved("a new name needs an expression with the atom alone, once")
+        fresh = self._fresh_name("int" if p.is_integer else "real")
+        rest = minus(p, scaled(of_atom(atom), slope))
+        return self._with_image(atom, scaled(minus(of_atom(fresh), rest), slope), NONE)
+
+    def invertible(self, atom: Atom) -> State:
+        """Where atom /= 0 is known, 1/atom is atom^-1, and atom*atom^-1 cancels."""
+        p = of_atom(atom)
+        inverse = self.algebra.inverse(p)
+        inverse_atom = next(iter(inverse.atoms), None)
+        if inverse_atom is None or inverse_atom.kind != "inv" or atom.loose:
+            raise NotProved("nothing to invert")
+        used: set[Atom] = set()
+        zero = self.algebra.rewrite(self.algebra.equal(p), self.images, None, used)
+        if zero.terms and not atom.positive:
+            raise NotProved("only what is not zero can be divided by")
+        deps = NONE.union(*(self.rests[u] for u in used))
+        return self._with_image(inverse_atom, of_atom(atom, -1), deps)
+
+    def remainder(self, atom: Atom, divisor: int, left: int) -> State:
+        """One of the cases of division with remainder: an integer name is divisor*q + left, q an integer (a natural, if the name is)."""
+        if atom.kind != "var" or not atom.integer or atom.loose or atom in self.images:
+            raise NotProved("only an integer name can be divided with remainder")
+        quotient = of_atom(self._fresh_name("nat" if atom.nonneg else "int"))
+        return self._with_image(atom, plus(scaled(quotient, divisor), constant(left)), NONE)
 
     def open_positive_part(self, atom: Atom) -> State:
         """pos(p) = [p >= 0]*p, for all p."""
@@ -232,12 +271,6 @@ class State:
         return other
 
 
-def _fraction(value: Rational) -> Rational:
-    from fractions import Fraction
-
-    return Fraction(value)
-
-
 def _row_of(atom: Atom, holds: bool, deps: Dependencies) -> Row | None:
     """The row that a decided comparison gives; a name that is true or false, or p /= 0, gives none."""
     if atom.kind != "ind":
@@ -264,7 +297,7 @@ def atom_row(algebra: Algebra, atom: Atom, which: str) -> Row:
     """Rows that hold for every value: signs, floor and positive part against what is inside, indicators in [0, 1]."""
     me = of_atom(atom)
     match which:
-        case "nonneg" if atom.positive and atom.integer:
+        case "one" if atom.positive and atom.integer:
             return Row(minus(me, UNITY), ">=")
         case "nonneg" if atom.positive:
             return Row(me, ">")
@@ -287,13 +320,15 @@ def _floor_above(atom: Atom) -> Row:
     gap = minus(plus(of_atom(atom), UNITY), p)
     below = denominator(p)
     if scaled(p, below).is_integer:
-        return Row(minus(gap, constant(1 / _fraction(below))), ">=")
+        return Row(minus(gap, constant(Fraction(1, below))), ">=")
     return Row(gap, ">")
 
 
 def atom_facts(atom: Atom) -> tuple[str, ...]:
     """Which facts `atom_row` has for the atom."""
-    signs = ("nonneg",) if atom.nonneg else ()
+    signs: tuple[str, ...] = ("nonneg",) if atom.nonneg else ()
+    if atom.positive and atom.integer:
+        signs = ("nonneg", "one")
     if atom.kind == "floor":
         return (*signs, "below", "above")
     if atom.kind == "pos" or atom.idempotent:
@@ -311,12 +346,23 @@ def law_instance(algebra: Algebra, law: Law, args: Sequence[Poly]) -> Poly:
     for parameter, arg in zip(law.parameters, args, strict=True):
         if parameter.sort in ("nat", "int") and not arg.is_integer:
             raise NotProved(f"the law '{law.name}' needs an integer for {parameter.name}")
+        if parameter.sort == "bool" and not _is_indicator(arg):
+            raise NotProved(f"the law '{law.name}' needs a truth value for {parameter.name}")
         if parameter.sort == "nat":
             guard = times(guard, algebra.compare(arg, strict=False))
         values[parameter] = arg
     guard = times(guard, algebra.normal(law.given, values))
     formula = algebra.normal(law.formula, values)
     return plus(minus(UNITY, guard), times(guard, formula))
+
+
+def _is_indicator(p: Poly) -> bool:
+    """0, 1, an indicator, or 1 minus one."""
+    rest = p if len(p.terms) == 1 else minus(UNITY, p)
+    if rest.constant is not None:
+        return rest.constant in (0, 1)
+    (mono, c), *more = rest.terms.items()
+    return not more and c == 1 and all(a.idempotent for a, _ in mono)
 
 
 def sum_instance(algebra: Algebra, kind: str, atom: Atom, antidifference: Poly | None) -> Poly:
@@ -437,7 +483,18 @@ class SumLaw:
     antidifference: Poly | None = None
 
 
-Move: TypeAlias = Define | Shift | OpenPositivePart | ThreeWays | Instance | SumLaw
+@dataclass(frozen=True, slots=True)
+class Rename:
+    poly: Poly
+    atom: Atom
+
+
+@dataclass(frozen=True, slots=True)
+class Invert:
+    atom: Atom
+
+
+Move: TypeAlias = Define | Shift | Rename | Invert | OpenPositivePart | ThreeWays | Instance | SumLaw
 
 
 @dataclass(frozen=True, slots=True)
@@ -453,7 +510,15 @@ class Cut:
     no: Certificate
 
 
-Certificate: TypeAlias = Leaf | Then | Cut
+@dataclass(frozen=True, slots=True)
+class ByRemainder:
+    """One branch for every remainder of the name by a natural divisor, which is their number."""
+
+    atom: Atom
+    branches: tuple[Certificate, ...]
+
+
+Certificate: TypeAlias = Leaf | Then | Cut | ByRemainder
 
 
 def moved(state: State, move: Move, laws: Mapping[str, Law]) -> State:
@@ -463,6 +528,10 @@ def moved(state: State, move: Move, laws: Mapping[str, Law]) -> State:
             return state.define(row, atom)
         case Shift(row, atom):
             return state.shift(row, atom)
+        case Rename(poly, atom):
+            return state.rename(poly, atom)
+        case Invert(atom):
+            return state.invertible(atom)
         case OpenPositivePart(atom):
             return state.open_positive_part(atom)
         case ThreeWays(atom):
@@ -531,6 +600,11 @@ def check(
             case Cut(atom, yes, no):
                 work.append((state.assume(atom, True), yes))
                 work.append((state.assume(atom, False), no))
+            case ByRemainder(atom, branches):
+                if not branches:
+                    raise NotProved("a division with remainder by nothing")
+                for left, branch in enumerate(branches):
+                    work.append((state.remainder(atom, len(branches), left), branch))
             case Then(move, rest):
                 if isinstance(move, Instance) and move.law in laws and laws[move.law].lean:
                     leaned.add(laws[move.law].lean)
