@@ -20,7 +20,7 @@ NOWHERE = Span(0, 0, 1, 1)
 
 
 def _span() -> Span:
-    return field(default=NOWHERE, compare=False, repr=False)  # type: ignore[return-value]
+    return field(default=NOWHERE, compare=False, repr=False)
 
 
 # ------------------------------------------------------------------ formulas and expressions

@@ -1,0 +1,208 @@
+"""The reader's place in the tokens, what it complains of, and how it finds its feet again after a mistake.
+
+A mistake is raised where it is seen and recorded where reading can go on: at the next statement, header item or item.
+"""
+
+from __future__ import annotations
+
+from workbench.errors import Problem, Span
+from workbench.sheet.lexer import BAD, END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING, Token, read_tokens
+from workbench.sheet.tree import Name
+from workbench.sheet.words import ITEM_WORDS, MOST_PROBLEMS, NESTING, RESERVED, quoted
+
+
+class Mistake(Exception):
+    """Something is wrong at a place; reading goes on after it. Never leaves the reader."""
+
+    def __init__(self, place: Token | Span, message: str, mend: str | None = None) -> None:
+        super().__init__(message)
+        self.span = place if isinstance(place, Span) else span_of(place)
+        self.message = message
+        self.mend = mend
+
+
+class TooDeep(Exception):
+    """Nesting beyond the limit. Reading goes on at the next item only. Never leaves the reader."""
+
+    def __init__(self, place: Token, message: str = f"this is nested more than {NESTING} deep") -> None:
+        super().__init__(message)
+        self.place = place
+
+
+class Enough(Exception):
+    """As many problems as are told in one go. Never leaves the reader."""
+
+
+def span_of(token: Token) -> Span:
+    return Span(token.start, token.end, token.line, token.column)
+
+
+class Cursor:
+    def __init__(self, text: str, path: str) -> None:
+        self.text = text
+        self.path = path
+        self.tokens = read_tokens(text)
+        self.at = 0
+        self.token = self.tokens[0]
+        self.depth = 0  # blocks and brackets that are open
+        self.problems: list[Problem] = []
+        self.doubtful: set[str] = set()
+        self._line_of_last_problem: tuple[int, str] = (0, "")
+
+    # -------------------------------------------------------------- moving
+    def advance(self) -> Token:
+        """Takes the present token; the last one can be taken again and again."""
+        token = self.token
+        if token.kind != END_OF_TEXT:
+            self.at += 1
+            self.token = self.tokens[self.at]
+        return token
+
+    @property
+    def next(self) -> Token:
+        """The token after the present one."""
+        return self.tokens[min(self.at + 1, len(self.tokens) - 1)]
+
+    @property
+    def previous(self) -> Token:
+        return self.tokens[max(self.at - 1, 0)]
+
+    def take(self, kind: str) -> bool:
+        """Takes the present token if it is of that kind."""
+        if self.token.kind != kind:
+            return False
+        self.advance()
+        return True
+
+    def is_word(self, word: str) -> bool:
+        """Whether the present token is this word, reserved or not."""
+        return self.token.text == word and self.token.kind in (NAME, word)
+
+    def take_word(self, word: str) -> bool:
+        if not self.is_word(word):
+            return False
+        self.advance()
+        return True
+
+    def expect(self, kind: str, what: str | None = None, mend: str | None = None) -> Token:
+        """Takes a token of that kind; raises Mistake where another stands."""
+        if self.token.kind != kind:
+            raise self.expected(what or f"'{kind}'", mend)
+        return self.advance()
+
+    def expect_word(self, word: str, mend: str | None = None) -> Token:
+        if not self.is_word(word):
+            raise self.expected(f"'{word}'", mend)
+        return self.advance()
+
+    def expect_name(self, what: str) -> Token:
+        """Takes a name. `what` says of what, such as 'the name of a counter'."""
+        token = self.token
+        if token.kind in RESERVED:
+            raise Mistake(token, f"'{token.text}' is a word of the language and cannot be {what}",
+                          "choose another name")  # fmt: skip
+        return self.expect(NAME, what)
+
+    def skip_newlines(self) -> None:
+        while self.token.kind == NEWLINE:
+            self.advance()
+
+    # -------------------------------------------------------------- places
+    def since(self, first: Token) -> Span:
+        """The stretch from that token to the last one taken."""
+        return Span(first.start, max(first.start, self.previous.end), first.line, first.column)
+
+    def begins_line(self) -> bool:
+        return self.at == 0 or self.previous.kind == NEWLINE
+
+    def at_item(self) -> bool:
+        """Whether an item begins here; its words are names elsewhere, so what follows decides."""
+        token = self.token
+        if token.text not in ITEM_WORDS or not self.begins_line():
+            return False
+        return self.next.kind in (NAME, STRING) or self.next.kind in RESERVED
+
+    def enter(self, token: Token) -> None:
+        self.depth += 1
+        if self.depth > NESTING + 1:  # the block of a routine is the first
+            raise TooDeep(token)
+
+    def leave(self) -> None:
+        self.depth -= 1
+
+    # -------------------------------------------------------------- complaining
+    def expected(self, what: str, mend: str | None = None) -> Mistake:
+        """The mistake that the present token is not what had to stand here."""
+        token = self.token
+        if token.kind == BAD:
+            return bad_token(token)
+        return Mistake(token, f"expected {what}, found {described(token)}", mend)
+
+    def record(self, mistake: Mistake) -> None:
+        self.complain(mistake.span, mistake.message, mistake.mend)
+
+    def complain(self, place: Token | Span, message: str, mend: str | None = None) -> None:
+        """Records a problem. Raises Enough when there are too many."""
+        span = place if isinstance(place, Span) else span_of(place)
+        self.problems.append(Problem(self.path, span, message, mend, self.line_at(span)))
+        if len(self.problems) >= MOST_PROBLEMS:
+            raise Enough
+
+    def line_at(self, span: Span) -> str:
+        """The line of the text that the span begins in."""
+        number, line = self._line_of_last_problem
+        if number != span.line:  # problems of one line share its text, which may be long
+            line = line_of(self.text, span)
+            self._line_of_last_problem = (span.line, line)
+        return line
+
+    def skip_line(self, *stops: str) -> list[Token]:
+        """Goes on to the next newline, or to a token of one of those kinds; what was passed over."""
+        passed = []
+        while self.token.kind not in (NEWLINE, END_OF_TEXT, *stops):
+            passed.append(self.advance())
+        self.doubt(passed)
+        return passed
+
+    def doubt(self, tokens: list[Token]) -> None:
+        self.doubtful.update(t.text for t in tokens if t.kind == NAME)
+
+    def hole(self, first: Token) -> Name:
+        """Stands where an expression could not be read; such a sheet has problems and is used for nothing else."""
+        return Name("", span=self.since(first))
+
+
+def line_of(text: str, span: Span) -> str:
+    """The line of the text that the span begins in, without its end."""
+    start = span.start - span.column + 1
+    end = text.find("\n", span.start)
+    return text[start : end if end >= 0 else len(text)].rstrip("\r")
+
+
+def described(token: Token) -> str:
+    """How a message calls a token."""
+    if token.kind == END_OF_TEXT:
+        return "the end of the sheet"
+    if token.kind == NEWLINE:
+        return "';'" if token.text == ";" else "the end of the line"
+    if token.kind == STRING:
+        return "the text " + quoted(token.text)
+    if token.kind == NUMBER:
+        return "the number " + quoted(token.text)
+    return quoted(token.text)
+
+
+def bad_token(token: Token) -> Mistake:
+    """What is wrong with a character that no token begins with."""
+    character = token.text
+    if character == '"':
+        return Mistake(token, "this text is never closed", 'write " before the line ends')
+    if character == "_":
+        return Mistake(token, "'_' stands only inside a name or between the digits of a number")
+    if character == "!":
+        return Mistake(token, "'!' alone means nothing", "write 'not', or != for unequal, or fact(n)")
+    code = f"U+{ord(character):04X}"
+    if not character.isprintable() or character.isspace():
+        return Mistake(token, f"the character {code} may stand in comments and texts only", "delete it")
+    mend = "names are written in ASCII letters, digits and '_'" if character.isalnum() else None
+    return Mistake(token, f"{quoted(character)} ({code}) is no sign of the language", mend)

@@ -1,0 +1,117 @@
+"""Text to tokens, with every newline that means nothing taken out. Knows words, but no grammar.
+
+Never fails: what is no token of the language becomes one of kind BAD, and the reader says what is wrong with it, unless
+it stands where a unit may be.
+"""
+
+from __future__ import annotations
+
+import re
+from typing import NamedTuple
+
+from workbench.sheet.words import HEADER_WORDS, ITEM_WORDS, LEVELS, RESERVED, STATEMENT_WORDS
+
+NAME, NUMBER, STRING, NEWLINE, BAD, END_OF_TEXT = "name", "number", "string", "newline", "bad", "end of text"
+
+
+class Token(NamedTuple):
+    """`kind` is one of the six above, or the token itself for a reserved word or a sign."""
+
+    kind: str
+    text: str
+    start: int
+    end: int
+    line: int
+    column: int
+
+
+_TOKEN = re.compile(
+    r"""[ \t]*(?:
+      (?P<newline>\n|\r\n|;)
+    | (?P<comment>\#[^\n]*)
+    | (?P<number>[0-9]+(?:_[0-9]+)*(?:\.[0-9]+(?:_[0-9]+)*)?(?:[eE][+-]?[0-9]+)?
+        (?:[ \t]*[KMGTPE]iB(?![A-Za-z0-9_]))?)
+    | (?P<name>[A-Za-z][A-Za-z0-9_]*)
+    | (?P<string>"[^"\n]*")
+    | (?P<sign>:=|->|<=|>=|!=|[-+*/^=<>(),:.'≤≥≠×·÷∧∨¬⇒′])
+    | (?P<text_end>\Z)
+    | (?P<bad>.)
+    )""",
+    re.VERBOSE | re.DOTALL,
+)
+
+ALIASES = {
+    "≤": "<=", "≥": ">=", "≠": "!=", "×": "*", "·": "*", "÷": "/", "∧": "and", "∨": "or", "¬": "not", "⇒": "implies",
+    "′": "'",
+}  # fmt: skip
+
+# After one of these a newline is white space.
+CONTINUED = frozenset(LEVELS) | {":=", "->", ",", ":", "(", ".", "not"}
+
+# These cannot stand inside brackets: a line that begins so shows that a bracket was never closed.
+_OUTSIDE = (STATEMENT_WORDS - {"if", "then", "else", "for", "from", "to", "size"}) | HEADER_WORDS
+
+
+def tokens_of(text: str) -> list[Token]:
+    """All tokens of the text, comments left out, newlines as they stand; END_OF_TEXT last."""
+    found: list[Token] = []
+    line, line_start = 1, 0
+    for match in _TOKEN.finditer(text):
+        group = match.lastgroup
+        start, end = match.span(group)  # type: ignore[arg-type]
+        word = match[group]  # type: ignore[index]
+        column = start - line_start + 1
+        if group == "comment":
+            continue
+        if group == "name":
+            kind = word if word in RESERVED else NAME
+        elif group == "sign":
+            kind = ALIASES.get(word, word)
+        elif group == "text_end":
+            found.append(Token(END_OF_TEXT, "", start, end, line, column))
+            break
+        else:
+            kind = group or BAD  # newline, number, string, bad
+        found.append(Token(kind, word, start, end, line, column))
+        if kind == NEWLINE and word != ";":
+            line, line_start = line + 1, end
+    return found
+
+
+def without_idle_newlines(tokens: list[Token]) -> list[Token]:
+    """The tokens without newlines that are white space: inside ( ), after a trailing operator, comma or colon, and all
+    but one of several in a row. (Those next to block words are the reader's affair.)"""
+    kept: list[Token] = []
+    depth = 0
+    before = NEWLINE
+    for at, token in enumerate(tokens):
+        kind = token.kind
+        if kind == NEWLINE:
+            if before == NEWLINE:
+                continue
+            if depth and token.text != ";":
+                if not _begins_anew(tokens, at + 1):
+                    continue
+                depth = 0
+            elif before in CONTINUED and token.text != ";":
+                continue
+        elif kind == "(":
+            depth += 1
+        elif kind == ")":
+            depth = max(0, depth - 1)
+        kept.append(token)
+        before = kind
+    return kept
+
+
+def _begins_anew(tokens: list[Token], at: int) -> bool:
+    """Whether the token can only begin a statement or an item, so that an open bracket before it was forgotten."""
+    token = tokens[at]
+    if token.kind in _OUTSIDE:
+        return True
+    return token.text in ITEM_WORDS and tokens[at + 1].kind in (NAME, STRING)
+
+
+def read_tokens(text: str) -> list[Token]:
+    """What the reader reads: `tokens_of` the text without idle newlines."""
+    return without_idle_newlines(tokens_of(text))

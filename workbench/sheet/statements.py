@@ -1,0 +1,429 @@
+"""Reads statements, blocks and headers."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+from workbench.sheet.cursor import Mistake
+from workbench.sheet.expressions import ExpressionReader
+from workbench.sheet.lexer import END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING, Token
+from workbench.sheet.tree import (
+    AnyValue,
+    Assign,
+    Block,
+    CallStatement,
+    CasesHint,
+    Claim,
+    Either,
+    Expr,
+    For,
+    Given,
+    Header,
+    HeaderItem,
+    HoldStatement,
+    If,
+    Measure,
+    Note,
+    ResourceStatement,
+    Skip,
+    Sort,
+    Source,
+    Stage,
+    Statement,
+    UsingHint,
+    Value,
+    Var,
+    While,
+)
+from workbench.sheet.words import HEADER_WORDS, SORTS, STATEMENT_WORDS, nearest, quoted
+
+CLOSERS = frozenset(("end", "else", "elif"))  # what ends a block
+HINTS = ("cases", "using")
+OPENERS = frozenset(("then", "do", "is", "either"))  # a line that ends so opens a block, even if it cannot be read
+
+
+class StatementReader(ExpressionReader):
+    def __init__(self, text: str, path: str) -> None:
+        super().__init__(text, path)
+        self._statements: dict[str, Callable[[], Statement]] = {
+            "skip": self._skip, "result": self._assign, "note": self._note, "if": self._if, "either": self._either,
+            "while": self._while, "for": self._for, "var": self._var, "spend": self._resource,
+            "acquire": self._resource, "release": self._resource, "hold": self._hold, "stage": self._stage,
+        }  # fmt: skip
+        self._missing_end_at = -1  # the token before which a missing 'end' was told: tell it once
+        self.suspect: Token | None = None  # what an 'end' further left than it seems to have closed by mistake
+
+    # -------------------------------------------------------------- blocks
+    def block(self, opener: Token) -> Block:
+        """{ stmt NL }, up to a word that ends it or to the next item."""
+        self.enter(opener)
+        self.blocks += 1
+        found: list[Statement] = []
+        while True:
+            self.skip_newlines()
+            if self.token.kind in CLOSERS or self.token.kind == END_OF_TEXT or self.at_item():
+                break
+            first = self.token
+            try:
+                found.append(self._statement())
+                self.end_of_line()
+            except Mistake as mistake:
+                self.record(mistake)
+                self._resume(first)
+        self.blocks -= 1
+        self.leave()
+        return tuple(found)
+
+    def _statement(self) -> Statement:
+        read = self._statements.get(self.token.kind)
+        if read is not None:
+            return read()
+        if self.token.kind == NAME:
+            if self.next.kind == "(":
+                return self._call()
+            if self.next.kind in (":=", "="):
+                return self._assign()
+        return self._no_statement()
+
+    def _no_statement(self) -> Statement:
+        """A misspelt word is read as the right one, so that what it opens is closed."""
+        token = self.token
+        if token.kind == NAME:
+            near = nearest(token.text, sorted(STATEMENT_WORDS))
+            if near in self._statements:
+                self.complain(token, f"{quoted(token.text)} begins no statement", f"is '{near}' meant?")
+                self.token = token._replace(kind=near)
+                return self._statements[near]()
+            if near in CLOSERS and self.next.kind in (NEWLINE, END_OF_TEXT):
+                self.complain(token, f"{quoted(token.text)} is no statement", f"is '{near}' meant?")
+                self.token = self.tokens[self.at] = token._replace(kind=near)
+                return Skip(self.since(token))
+            mend = f"{token.text}(…) is a call, {token.text} := … an assignment" if len(token.text) < 20 else None
+            raise Mistake(self.next, f"expected '(' or ':=' after {quoted(token.text)}", mend)
+        if token.kind in HEADER_WORDS:
+            raise Mistake(token, f"'{token.kind}' stands in headers, not among statements",
+                          "move it before the 'is' or 'do'")  # fmt: skip
+        raise self.expected("a statement")
+
+    def end_of_line(self) -> None:
+        """After a statement: a newline, `;`, a word that ends a block, or the end. Blocks close themselves."""
+        kind = self.token.kind
+        if kind in (NEWLINE, END_OF_TEXT) or kind in CLOSERS or self.previous.kind == "end":
+            return
+        raise self.expected("the end of the line", "statements stand on lines of their own, or ';' between them")
+
+    def _resume(self, first: Token) -> None:
+        """Goes on after a statement that could not be read; a block that it opened is read and dropped."""
+        self.doubt([t for t in self.tokens[max(0, self.at - 50) : self.at] if t.start >= first.start])
+        if self.token is first:
+            self.advance()
+        passed = self.skip_line(*CLOSERS)
+        while self.token.kind == "else" and any(t.kind == "then" for t in passed):
+            self.advance()  # of an `if` that is a value
+            passed = self.skip_line(*CLOSERS)
+        if not (passed and passed[-1].kind in OPENERS and self.token.kind == NEWLINE):
+            return
+        before, opener = self.at, passed[-1]
+        self.block(opener)
+        self._drop_branches(opener)
+        self.doubt(self.tokens[before : self.at])
+        self.close(opener)
+
+    def _drop_branches(self, opener: Token) -> None:
+        while self.token.kind in ("else", "elif"):
+            if self.advance().kind == "elif":
+                self.skip_line("then")
+                self.take("then")
+            self.block(opener)
+
+    def close(self, opener: Token) -> None:
+        """Takes the `end` of what began at `opener`. Where it is missing, says so once."""
+        self.skip_newlines()
+        token = self.token
+        if token.kind == "end":
+            misplaced = self.begins_line() and token.column < opener.column and token.line > opener.line
+            if misplaced and self.suspect is None:
+                self.suspect = opener
+            self.advance()
+            return
+        if self._missing_end_at != self.at:
+            self._missing_end_at = self.at
+            place = self.suspect or opener
+            self.complain(place, f"{quoted(place.text)} is never closed: its 'end' is missing",
+                          "write 'end' where it ends")  # fmt: skip
+
+    def open_block(self, word: str, opener: Token) -> None:
+        """Takes `then`, `do` or `is`; where it is missing, says so and goes on as if it stood there."""
+        missing = self.expected(f"'{word}'", f"the block of {quoted(opener.text)} begins with '{word}'")
+        self.skip_newlines()
+        if not self.take(word):
+            self.record(missing)
+
+    # -------------------------------------------------------------- statements
+    def _skip(self) -> Statement:
+        return Skip(self.since(self.advance()))
+
+    def _call(self) -> Statement:
+        first = self.advance()
+        return CallStatement(first.text, self.expressions(), self.since(first))
+
+    def _assign(self) -> Statement:
+        """target ":=" value"""
+        first = self.advance()
+        target_span = self.since(first)
+        if self.token.kind == "=":
+            self.complain(self.token, "'=' compares; an assignment is written with ':='",
+                          f"{quoted(first.text)[1:-1]} := …")  # fmt: skip
+            self.advance()
+        else:
+            self.expect(":=")
+        value = self._value()
+        return Assign(first.text, value, self.since(first), target_span)
+
+    def _value(self) -> Value:
+        """expr | "any" [ "where" formula ]"""
+        ends = self.next.kind in (NEWLINE, END_OF_TEXT) or self.next.kind in CLOSERS or self.next.text == "where"
+        if not (self.is_word("any") and ends):
+            return self.formula()
+        first = self.advance()
+        condition = self.formula() if self.take_word("where") else None
+        return AnyValue(condition, self.since(first))
+
+    def _note(self) -> Statement:
+        first = self.advance()
+        name = self.expect_name("the name of a note").text
+        self.expect("=", mend="a note is written: note NAME = …")
+        return Note(name, self.formula(), self.since(first))
+
+    def _if(self) -> Statement:
+        first = self.advance()
+        branches = [self._branch(first)]
+        otherwise: Block | None = None
+        while self.token.kind == "elif":
+            branches.append(self._branch(self.advance()))
+        if self.token.kind == "else":
+            otherwise = self.block(self.advance())
+            if self.token.kind in ("else", "elif"):
+                self.complain(self.token, f"'{self.token.kind}' after 'else'", "'else' comes last, and once")
+                self._drop_branches(first)
+        self.close(first)
+        return If(tuple(branches), otherwise, self.since(first))
+
+    def _branch(self, opener: Token) -> tuple[Expr, Block]:
+        condition = self.attempt(self.formula, "then")
+        self.open_block("then", opener)
+        return condition, self.block(opener)
+
+    def _either(self) -> Statement:
+        first = self.advance()
+        branches = [self.block(first)]
+        while self.token.kind == "else":
+            branches.append(self.block(self.advance()))
+        if self.token.kind == "elif":
+            self.complain(self.token, "'elif' in an 'either'", "its branches have no conditions: write 'else'")
+            self._drop_branches(first)
+        self.close(first)
+        return Either(tuple(branches), self.since(first))
+
+    def _while(self) -> Statement:
+        first = self.advance()
+        condition = self.attempt(self.formula, "do")
+        header, body = self._loop(first)
+        return While(condition, header, body, self.since(first))
+
+    def _for(self) -> Statement:
+        """"for" NAME "from" expr ("to" | "below") expr [ NL header ] "do" block "end" """
+        first = self.advance()
+        variable, inclusive = "", True
+        low: Expr = self.hole(first)
+        high: Expr = self.hole(first)
+        try:
+            variable = self.expect_name("the variable of a loop").text
+            self.expect("from", mend="a loop is written: for i from 0 below n do")
+            low = self.formula()
+            inclusive = self.is_word("to")
+            if not (self.take("to") or self.take_word("below")):
+                raise self.expected("'to' or 'below'", "to: up to and including; below: the last value excluded")
+            high = self.attempt(self.formula, "do")
+        except Mistake as mistake:
+            self.record(mistake)
+            self.skip_line("do")
+        header, body = self._loop(first)
+        return For(variable, low, high, inclusive, header, body, self.since(first))
+
+    def _loop(self, first: Token) -> tuple[Header, Block]:
+        header = self.header()
+        self.open_block("do", first)
+        body = self.block(first)
+        self.close(first)
+        return header, body
+
+    def sort(self) -> Sort:
+        """"nat" | "int" | "real" | "bool" """
+        token = self.token
+        if token.kind not in SORTS:
+            near = nearest(token.text, sorted(SORTS)) if token.kind == NAME else None
+            raise self.expected("a type", f"is '{near}' meant?" if near else "the types are nat, int, real and bool")
+        self.advance()
+        sort: Sort = token.kind  # type: ignore[assignment]
+        return sort
+
+    def _var(self) -> Statement:
+        """"var" NAME ":" type [ "size" sum ] [ ":=" value ]"""
+        first = self.advance()
+        name = self.expect_name("the name of a variable").text
+        self.expect(":", mend="a variable is declared with its type: var n: nat")
+        sort = self.sort()
+        size = self.sum() if self.take("size") else None
+        if self.token.kind == "=":
+            self.complain(self.token, "'=' compares; an assignment is written with ':='", f"write: {sort} := …")
+            self.token = self.token._replace(kind=":=")
+        value = self._value() if self.take(":=") else None
+        return Var(name, sort, size, value, self.since(first))
+
+    def _resource(self) -> Statement:
+        first = self.advance()
+        verb: Any = first.kind
+        amount = self.formula()
+        resource = self.resource_name(verb)
+        return ResourceStatement(verb, amount, resource, self.since(first))
+
+    def resource_name(self, verb: str) -> str:
+        what = "the name of a counter" if verb == "spend" else "the name of a gauge"
+        return self.expect_name(what).text
+
+    def _hold(self) -> Statement:
+        first = self.advance()
+        amount: Expr = self.hole(first)
+        gauge = ""
+        try:
+            amount = self.formula()
+            gauge = self.resource_name("hold")
+            self.expect("do", mend="hold … do … end gives the amount back at its end; 'acquire' keeps it")
+        except Mistake as mistake:
+            self.record(mistake)
+            self.skip_line("do")
+            self.take("do")
+        body = self.block(first)
+        self.close(first)
+        return HoldStatement(amount, gauge, body, self.since(first))
+
+    def _stage(self) -> Statement:
+        first = self.advance()
+        name = self.expect_name("the name of a stage").text
+        header = self.header()
+        self.open_block("is", first)
+        body = self.block(first)
+        self.close(first)
+        return Stage(name, header, body, self.since(first))
+
+    # -------------------------------------------------------------- headers
+    def header(self) -> Header:
+        """{ given | claim { hint } | measure | source }, up to something else."""
+        found: list[HeaderItem] = []
+        readers: dict[str, Callable[[], HeaderItem]] = {
+            "given": self._given, "claim": self._claim, "measure": self._measured, "source": self.source,
+        }  # fmt: skip
+        while True:
+            newline = self.token.kind == NEWLINE or self.begins_line()
+            self.skip_newlines()
+            first = self.token
+            if first.kind not in HEADER_WORDS or (first.kind == "source" and self.at_item() and self._ends_header()):
+                break
+            try:
+                if not newline:
+                    raise Mistake(first, f"'{first.kind}' begins a line of its own")
+                if first.kind in HINTS:
+                    raise Mistake(first, f"the hint '{first.kind}' belongs under a claim", "move it below its claim")
+                found.append(readers[first.kind]())
+            except Mistake as mistake:
+                self._skip_header_line(mistake)
+        return Header(tuple(found))
+
+    def _ends_header(self) -> bool:
+        """A `source` at the left edge, outside of blocks, is an item: the routine before it has lost its body."""
+        return self.token.column == 1
+
+    def _skip_header_line(self, mistake: Mistake) -> None:
+        self.record(mistake)
+        if self.token.kind in HEADER_WORDS:
+            self.advance()
+        self.skip_line("is", "do")
+
+    def _header_line(self) -> None:
+        if self.token.kind not in (NEWLINE, END_OF_TEXT, "is", "do"):
+            raise self.expected("the end of the line")
+
+    def _given(self) -> HeaderItem:
+        first = self.advance()
+        formula = self.formula()
+        self._header_line()
+        return Given(formula, self.since(first))
+
+    def _claim(self) -> HeaderItem:
+        """"claim" [ NAME ":" ] cform NL { hint }"""
+        first = self.advance()
+        label = None
+        if self.next.kind == ":":
+            label = self.expect_name("a label").text
+            self.advance()
+        start = self.token
+        self.in_claim = True
+        formula = self.formula()
+        formula_span, span = self.since(start), self.since(first)
+        self.in_claim = False
+        self._header_line()
+        hints: list[CasesHint | UsingHint] = []
+        while self.token.kind == NEWLINE and self.next.kind in HINTS:
+            self.advance()
+            try:
+                hints.append(self._hint())
+            except Mistake as mistake:
+                self._skip_header_line(mistake)
+        return Claim(label, formula, tuple(hints), span, formula_span)
+
+    def _hint(self) -> CasesHint | UsingHint:
+        first = self.advance()
+        if first.kind == "cases":
+            hint: CasesHint | UsingHint = CasesHint(self.formula(), self.since(first))
+        else:
+            law = self.expect_name("the name of a law or function").text
+            hint = UsingHint(law, self.expressions(), self.since(first))
+        self._header_line()
+        return hint
+
+    def _measured(self) -> HeaderItem:
+        first = self.advance()
+        components = [self.formula()]
+        while self.take(","):
+            components.append(self.formula())
+        self._header_line()
+        return Measure(tuple(components), self.since(first))
+
+    def source(self) -> Source:
+        """"source" STRING [ "lines" INT "to" INT ] [ "digest" STRING ]"""
+        first = self.advance()
+        path = self.string("the path of a source file")
+        lines: list[int | None] = [None, None]
+        if self.take_word("lines"):
+            lines = [self.whole_number("the first line"), None]
+            self.expect("to", mend='lines are written: source "ring.c" lines 4 to 13')
+            lines[1] = self.whole_number("the last line")
+        digest = self.string("a digest") if self.take_word("digest") else None
+        span = self.since(first)
+        self._header_line()
+        return Source(path, lines[0], lines[1], digest, span)
+
+    # -------------------------------------------------------------- small parts
+    def string(self, what: str) -> str:
+        return self.expect(STRING, what, 'texts stand in "…"').text[1:-1]
+
+    def whole_number(self, what: str) -> int:
+        token = self.token
+        if token.kind != NUMBER:
+            raise self.expected(what)
+        value = self._number().value
+        if value.denominator != 1:
+            raise Mistake(token, f"{quoted(token.text)} is no whole number")
+        return int(value)
