@@ -1,7 +1,8 @@
 """The program part of a derivation: from the last statement to the first, one substitution a step.
 
-What the rest of the program does is a relation between the state where it begins and the values at the end: equations on
-primed names, with what is known beside them. The substitution law (x := e. P) = P with e for x takes in one statement more.
+What the rest of the program does is a relation between the state where it begins and the values at the end:
+equations on primed names, with what is known beside them. The substitution law (x := e. P) = P with e for x takes in
+one statement more.
 """
 
 from __future__ import annotations
@@ -49,4 +50,3 @@ def _carried_back(events: Sequence[Event], formula: Term) -> tuple[Step, ...]:
         if formula != before or event.facts:
             steps.append(Step(event.move, event.words, before, formula, event.span))
     return tuple(steps)
-

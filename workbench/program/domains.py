@@ -1,6 +1,7 @@
 """Where a formula means something: the side conditions of its divisions, logarithms, powers, factorials, functions.
 
-`and`, `or`, `implies` and `if` guard what stands after them, so each condition comes with what is known where it is needed.
+`and`, `or`, `implies` and `if` guard what stands after them, so each condition comes with what is known where it is
+needed.
 """
 
 from __future__ import annotations
@@ -209,5 +210,3 @@ def _at_least_one(term: Term) -> Term:
     if term.op == "num":
         return TRUE if term.value >= 1 else FALSE
     return app("<=", ONE, term)
-
-

@@ -1,11 +1,13 @@
-"""What a sheet's functions and laws owe before they may be used: a function is well-founded and of its type, a law is true."""
+"""What a sheet's functions and laws owe before they may be used: a function is well-founded and of its type, a law
+is true.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-from workbench.algebra.terms import FALSE, ONE, Term, app, conjunction, implies, num, subterms, substitute, var
+from workbench.algebra.terms import FALSE, ONE, Term, app, conjunction, implies, num, substitute, subterms, var
 from workbench.errors import Span
 from workbench.program.domains import domain_conditions, guarded_subterms, of_sort
 from workbench.program.measures import components, owed
@@ -23,10 +25,19 @@ class _List:
 
     def add(self, kind: Kind, case: str, facts: list[Fact], goal: Term, span: Span) -> None:
         if goal.op != "true":
-            self.found.append(Obligation(
-                id=f"{self.of}.{len(self.found) + 1}", kind=kind, routine="", specification=self.of, claim=None,
-                case=case, facts=tuple(facts), goal=goal, span=span,
-            ))
+            self.found.append(
+                Obligation(
+                    id=f"{self.of}.{len(self.found) + 1}",
+                    kind=kind,
+                    routine="",
+                    specification=self.of,
+                    claim=None,
+                    case=case,
+                    facts=tuple(facts),
+                    goal=goal,
+                    span=span,
+                )
+            )
 
     def domain(self, term: Term, facts: list[Fact], span: Span) -> None:
         for condition in domain_conditions(term, self.program.functions):
@@ -34,11 +45,14 @@ class _List:
 
 
 def recursive_groups(functions: Mapping[str, Function]) -> dict[str, frozenset[str]]:
-    """For every function those that it is defined by and that are defined by it; itself included where it is recursive."""
-    return components({name: _called(f, functions) for name, f in functions.items()})
+    """For every function those that it is defined by and that are defined by it; itself included where it is
+    recursive.
+    """
+    return components({name: used_functions(f, functions) for name, f in functions.items()})
 
 
-def _called(f: Function, functions: Mapping[str, Function]) -> frozenset[str]:
+def used_functions(f: Function, functions: Mapping[str, Function]) -> frozenset[str]:
+    """The functions that a function is defined by, itself included where it is recursive."""
     terms = [t for t in (f.body, f.given, f.measure) if t is not None]
     return frozenset(s.name for t in terms for s in subterms(t) if s.op == "call" and s.name in functions)
 
@@ -68,7 +82,9 @@ def function_obligations(program: Program, function: Function, group: frozenset[
     return tuple(todo.found)
 
 
-def _falls(todo: _List, facts: list[Fact], function: Function, own: Term | None, t: Term, guards: tuple[Term, ...]) -> None:
+def _falls(
+    todo: _List, facts: list[Fact], function: Function, own: Term | None, t: Term, guards: tuple[Term, ...]
+) -> None:
     callee = todo.program.functions[t.name]
     other = measure_of(callee)
     under = conjunction(guards)
@@ -119,5 +135,6 @@ def law_condition(law: Law) -> Term:
 def _constants(program: Program) -> list[Fact]:
     return [
         Fact(c.condition, f"constant {c.name}", None, c.span)
-        for c in program.constants.values() if c.condition is not None and c.value is None
+        for c in program.constants.values()
+        if c.condition is not None and c.value is None
     ]

@@ -22,8 +22,8 @@ CANDIDATE_LIMIT = 40
 class Site:
     """`callee` is the specification that begins anew there: a routine's name, or for a loop its own label.
 
-    `make(own, other)` gives the obligations where the specification's own measure is `own` (over its start names) and the
-    one of what begins anew is `other` (over that one's start names).
+    `make(own, other)` gives the obligations where the specification's own measure is `own` (over its start names)
+    and the one of what begins anew is `other` (over that one's start names).
     """
 
     routine: str

@@ -59,8 +59,8 @@ class Obligation:
 
     `routine` and `specification` say whose it is, `claim` which claim's (None: the specification's side condition).
     `case` is the path in words. `middle` holds the names of middle states that a call, loop or stage left: values for
-    them are no refutation. `leans` is what the path rests on whatever facts the proof uses (side conditions of what it calls).
-    `derive` gives the program part of the derivation, computed when it is looked at.
+    them are no refutation. `leans` is what the path rests on whatever facts the proof uses (side conditions of what
+    it calls). `derive` gives the program part of the derivation, computed when it is looked at.
     """
 
     id: str

@@ -4,23 +4,27 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from workbench.algebra.terms import var
+from workbench.algebra.terms import Term, substitute, var
+from workbench.errors import Span
 from workbench.program.domains import domain_conditions, of_sort
 from workbench.program.measures import Site, components
-from workbench.program.obligation import Fact, Obligation
+from workbench.program.obligation import Fact, Kind, Obligation
 from workbench.program.priced import Loop, Program, Routine, Specification
 from workbench.program.walking import Walk
 
 
 @dataclass(frozen=True, slots=True)
 class Owed:
-    """`specifications`: by label, "" for the routine itself, with the claims that were inferred. `loops`: by label."""
+    """`specifications`: by label, "" for the routine itself, with the claims that were inferred. `loops`: by label.
+    `start`: what is known where the routine begins.
+    """
 
     routine: Routine
     specifications: dict[str, Specification]
     loops: dict[str, Loop]
     obligations: tuple[Obligation, ...]
     sites: tuple[Site, ...]
+    start: tuple[Term, ...]
 
 
 def recursive_groups(program: Program) -> dict[str, frozenset[str]]:
@@ -32,8 +36,8 @@ def of_routine(program: Program, routine: Routine, group: frozenset[str]) -> Owe
     """`group`: the routines that it is mutually recursive with."""
     walk = Walk(program, routine, group)
     walk.run()
-    obligations = (*_of_constants(program, routine), *walk.obligations)
-    return Owed(routine, walk.specifications, walk.loops, obligations, tuple(walk.sites))
+    obligations = (*_of_constants(program, routine), *walk.owing.obligations)
+    return Owed(routine, walk.specifications, walk.loops, obligations, tuple(walk.owing.sites), walk.start)
 
 
 def _of_constants(program: Program, routine: Routine) -> list[Obligation]:
@@ -41,10 +45,9 @@ def _of_constants(program: Program, routine: Routine) -> list[Obligation]:
     found: list[Obligation] = []
     facts: list[Fact] = []
 
-    def owe(kind: str, case: str, goal: object, span: object) -> None:
-        found.append(Obligation(
-            f"{routine.name}.constant{len(found) + 1}", kind, routine.name, "", None, case, tuple(facts), goal, span,  # type: ignore[arg-type]
-        ))
+    def owe(kind: Kind, case: str, goal: Term, span: Span) -> None:
+        label = f"{routine.name}.constant{len(found) + 1}"
+        found.append(Obligation(label, kind, routine.name, "", None, case, tuple(facts), goal, span))
 
     for c in program.constants.values():
         if c.value is not None:
@@ -59,15 +62,14 @@ def _of_constants(program: Program, routine: Routine) -> list[Obligation]:
             if c.value is None:
                 facts.append(Fact(c.condition, f"constant {c.name}", None, c.span))
             else:
-                owe("range", f"what is said of constant {c.name}", _with_value(c.condition, c.name, c.sort, c.value), c.span)
+                owe(
+                    "range",
+                    f"what is said of constant {c.name}",
+                    substitute(c.condition, {var(c.name, c.sort): c.value}),
+                    c.span,
+                )
     for s in program.states.values():
         if s.condition is not None:
             for condition in domain_conditions(s.condition, program.functions):
                 owe("domain", condition.what, condition.formula, s.span)
     return found
-
-
-def _with_value(formula, name, sort, value):  # type: ignore[no-untyped-def]
-    from workbench.algebra.terms import substitute
-
-    return substitute(formula, {var(name, sort): value})

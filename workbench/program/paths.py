@@ -1,7 +1,8 @@
 """A path through a program: what happened on it, and what the state is in terms of where it began.
 
-An event says what one statement does in terms of the state before it: names updated at once, facts that hold. The substitution
-law `(x := e. P) = P with e for x` is applied forwards here to keep the state; `deriving` applies it backwards, as it is shown.
+An event says what one statement does in terms of the state before it: names updated at once, facts that hold. The
+substitution law `(x := e. P) = P with e for x` is applied forwards here to keep the state; `deriving` applies it
+backwards, as it is shown.
 
 Names of present values and names of start values are the same names: before the first event they agree.
 """
@@ -104,8 +105,13 @@ def joined(branches: Sequence[Branch], words: str, span: Span) -> Event:
         for fact in path.facts:
             facts.append(Fact(implies(guard, fact.formula), fact.origin, fact.lean, fact.span))
     return Event(
-        "join", words, span, updates, tuple(facts),
-        frozenset().union(*(p.middle for _, p in done)), frozenset().union(*(p.leans for _, p in done)),
+        "join",
+        words,
+        span,
+        updates,
+        tuple(facts),
+        frozenset().union(*(p.middle for _, p in done)),
+        frozenset().union(*(p.leans for _, p in done)),
     )
 
 

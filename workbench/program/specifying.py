@@ -38,7 +38,9 @@ class Names:
         return name in self.program.counters or name.partition(".")[0] in self.program.gauges
 
 
-def resource_facts(known: Names, changed: Iterable[str], before: Mapping[str, Term], after: Mapping[str, Term]) -> list[Fact]:
+def resource_facts(
+    known: Names, changed: Iterable[str], before: Mapping[str, Term], after: Mapping[str, Term]
+) -> list[Fact]:
     """peak >= level, peaks and counters never fall: between the present values `before` and the values `after`."""
     facts = []
     for name in sorted(changed):
@@ -85,9 +87,7 @@ def call_event(known: Names, call: Call, callee: Routine, own: bool) -> Event:
     """The callee's claims on fresh names for what it may change."""
     state = known.next_state()
     updates, fresh = outcome(known, callee.changed, state)
-    before: dict[Term, Term] = {
-        var(p.name, p.sort): a for p, a in zip(callee.parameters, call.arguments, strict=True)
-    }
+    before: dict[Term, Term] = {var(p.name, p.sort): a for p, a in zip(callee.parameters, call.arguments, strict=True)}
     if callee.result is not None:
         result = var(f"{callee.name}@{state}", callee.result)
         before[var("result", callee.result)] = result
@@ -104,8 +104,13 @@ def call_event(known: Names, call: Call, callee: Routine, own: bool) -> Event:
     if callee.result is not None:
         middle |= {f"{callee.name}@{state}"}
     return Event(
-        "name a middle state", f"{'the recursive call ' if own else 'the call '}{shown}; its end state is @{state}",
-        call.span, updates, tuple(facts), middle, frozenset((Lean(callee.name, "", ""),)),
+        "name a middle state",
+        f"{'the recursive call ' if own else 'the call '}{shown}; its end state is @{state}",
+        call.span,
+        updates,
+        tuple(facts),
+        middle,
+        frozenset((Lean(callee.name, "", ""),)),
     )
 
 
@@ -134,8 +139,13 @@ def loop_event(known: Names, loop: Loop, spec: Specification, routine: str, *, a
     facts += resource_facts(known, loop.changed, {n: known.present(n) for n in fresh}, fresh)
     words = f"the rest of {spec.label}" if again else spec.label
     return Event(
-        "name a middle state", f"{words}; its end state is @{state}", loop.span, updates, tuple(facts),
-        frozenset(f.name for f in updates.values()), frozenset((lean,)),
+        "name a middle state",
+        f"{words}; its end state is @{state}",
+        loop.span,
+        updates,
+        tuple(facts),
+        frozenset(f.name for f in updates.values()),
+        frozenset((lean,)),
     )
 
 
@@ -147,8 +157,13 @@ def stage_event(known: Names, stage: Stage, routine: str) -> Event:
     facts = _claim_facts(stage.spec, {}, updates, routine, stage.spec.label, stage.spec.label)
     facts += resource_facts(known, stage.changed, {n: known.present(n) for n in fresh}, fresh)
     return Event(
-        "name a middle state", f"{stage.spec.label}; its end state is @{state}", stage.span, updates, tuple(facts),
-        frozenset(f.name for f in updates.values()), frozenset((Lean(routine, stage.spec.label, ""),)),
+        "name a middle state",
+        f"{stage.spec.label}; its end state is @{state}",
+        stage.span,
+        updates,
+        tuple(facts),
+        frozenset(f.name for f in updates.values()),
+        frozenset((Lean(routine, stage.spec.label, ""),)),
     )
 
 

@@ -13,7 +13,18 @@ from math import comb
 from workbench.algebra.denormal import term_of
 from workbench.algebra.formulas import show
 from workbench.algebra.normal import Algebra
-from workbench.algebra.polynomial import NOTHING, UNITY, Atom, Poly, TooLargeToNormalize, constant, minus, plus, scaled, times
+from workbench.algebra.polynomial import (
+    NOTHING,
+    UNITY,
+    Atom,
+    Poly,
+    TooLargeToNormalize,
+    constant,
+    minus,
+    plus,
+    scaled,
+    times,
+)
 from workbench.algebra.terms import ONE, Term, app, names, num, substitute, summation, var
 from workbench.program.paths import Path
 from workbench.program.priced import Claim, Loop
@@ -397,4 +408,3 @@ class _Solved:
 
 def _turned(op: str) -> str:
     return {"=": "=", "<=": ">=", ">=": "<="}[op]
-

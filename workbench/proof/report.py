@@ -76,7 +76,9 @@ class MathematicsReport:
 
 @dataclass(frozen=True, slots=True)
 class SheetReport:
-    """One sheet: `problems` where it is unreadable, else the reports of what it defines itself (not of what it uses)."""
+    """One sheet: `problems` where it is unreadable, else the reports of what it defines itself (not of what it
+    uses).
+    """
 
     path: str
     verdict: Literal["verified", "open", "refuted", "unreadable"]
