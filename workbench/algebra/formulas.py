@@ -9,11 +9,16 @@ from workbench.algebra.terms import Term
 # How tightly an operator binds; a part that binds less tightly than its place asks for goes into parentheses.
 _IF, _IMPLIES, _OR, _AND, _NOT, _COMPARE, _SUM, _PRODUCT, _NEGATIVE, _POWER, _ATOM = range(11)
 _BINARY = {
-    "+": (_SUM, _SUM, _PRODUCT), "-": (_SUM, _SUM, _PRODUCT),
-    "*": (_PRODUCT, _PRODUCT, _NEGATIVE), "/": (_PRODUCT, _PRODUCT, _NEGATIVE),
-    "div": (_PRODUCT, _PRODUCT, _NEGATIVE), "mod": (_PRODUCT, _PRODUCT, _NEGATIVE),
+    "+": (_SUM, _SUM, _PRODUCT),
+    "-": (_SUM, _SUM, _PRODUCT),
+    "*": (_PRODUCT, _PRODUCT, _NEGATIVE),
+    "/": (_PRODUCT, _PRODUCT, _NEGATIVE),
+    "div": (_PRODUCT, _PRODUCT, _NEGATIVE),
+    "mod": (_PRODUCT, _PRODUCT, _NEGATIVE),
     "^": (_POWER, _ATOM, _POWER),
-    "and": (_AND, _AND, _NOT), "or": (_OR, _OR, _AND), "implies": (_IMPLIES, _OR, _IMPLIES),
+    "and": (_AND, _AND, _NOT),
+    "or": (_OR, _OR, _AND),
+    "implies": (_IMPLIES, _OR, _IMPLIES),
     **{op: (_COMPARE, _SUM, _SUM) for op in ("=", "!=", "<", "<=", ">", ">=")},
     "iff": (_COMPARE, _SUM, _SUM),
 }
@@ -22,7 +27,9 @@ _NAMED = frozenset({"max", "min", "abs", "floor", "ceil", "lg", "fact", "binom"}
 
 
 def show(term: Term) -> str:
-    """The term in the sheet's notation. Reads back as an equal formula where its names are ones that a sheet can write."""
+    """The term in the sheet's notation. Reads back as an equal formula where its names are ones that a sheet can
+    write.
+    """
     memo: dict[Term, tuple[str, int]] = {}
     stack = [term]
     while stack:
