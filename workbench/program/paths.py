@@ -9,10 +9,10 @@ Names of present values and names of start values are the same names: before the
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Container, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 
-from workbench.algebra.terms import Term, conjunction, implies, negate, substitute, var
+from workbench.algebra.terms import ZERO, Term, add, app, conjunction, implies, negate, sub, substitute, var
 from workbench.errors import Span
 from workbench.program.obligation import Fact, Lean
 
@@ -83,44 +83,62 @@ class Branch:
     events: tuple[Event, ...]
 
 
-def joined(branches: Sequence[Branch], words: str, span: Span) -> Event:
-    """All branches as one event: each name gets `if condition then … else …`, each fact its condition as a guard.
+def joined(
+    branches: Sequence[Branch], words: str, span: Span, sight: Container[str], fresh: Callable[[Term], Term]
+) -> Event:
+    """All branches as one event: each name in sight gets `if condition then … else …`, each fact its condition as a
+    guard.
 
-    The conditions are over the names before the statement; exactly one of them holds.
+    The conditions are over the names before the statement; exactly one of them holds. A value that is no mere growth
+    of what was there before gets a fresh name and an equation, so that formulas do not double with every branch.
     """
     done = [(b, summary(b.events)) for b in branches]
-    names: dict[Term, None] = {}
-    for _, path in done:
-        names.update(dict.fromkeys(path.state))
-    updates = {}
+    names = dict.fromkeys(n for _, path in done for n in path.state if n.name in sight)
+    updates: dict[Term, Term] = {}
+    facts: list[Fact] = []
     for name in names:
-        value = done[-1][1].state.get(name, name)
-        for branch, path in reversed(done[:-1]):
-            other = path.state.get(name, name)
-            value = other if other == value else app_if(branch.condition, other, value)
-        updates[name] = value
-    facts = []
+        values = [(b.condition, path.state.get(name, name)) for b, path in done]
+        growths = [(c, _growth(value, name)) for c, value in values]
+        if all(value == values[0][1] for _, value in values):
+            updates[name] = values[0][1]
+        elif not name.is_formula and all(g is not None for _, g in growths):
+            updates[name] = add(name, _chosen([(c, g) for c, g in growths if g is not None]))
+        else:
+            updates[name] = new = fresh(name)
+            value = _chosen(values)
+            facts.append(Fact(app("iff" if value.is_formula else "=", new, value), f"{name.name} after the branches"))
     for i, (branch, path) in enumerate(done):
         guard = branch.condition if i < len(done) - 1 or len(done) == 1 else _none_of(b for b, _ in done[:-1])
-        for fact in path.facts:
-            facts.append(Fact(implies(guard, fact.formula), fact.origin, fact.lean, fact.span))
-    return Event(
-        "join",
-        words,
-        span,
-        updates,
-        tuple(facts),
-        frozenset().union(*(p.middle for _, p in done)),
-        frozenset().union(*(p.leans for _, p in done)),
-    )
+        facts += [Fact(implies(guard, f.formula), f.origin, f.lean, f.span) for f in path.facts]
+    middle = frozenset[str]().union(*(p.middle for _, p in done))
+    return Event("join", words, span, updates, tuple(facts), middle, frozenset().union(*(p.leans for _, p in done)))
+
+
+def _chosen(values: Sequence[tuple[Term, Term]]) -> Term:
+    """The value whose condition holds; the last one where none of the others does."""
+    result = values[-1][1]
+    for condition, value in reversed(values[:-1]):
+        if value != result:
+            result = Term("if", (condition, value, result), sort="bool" if value.is_formula else "real")
+    return result
+
+
+def _growth(value: Term, name: Term) -> Term | None:
+    """e where the value is name + e, written as sums and differences that begin with the name."""
+    parts: list[tuple[str, Term]] = []
+    while value.op in ("+", "-") and value != name:
+        parts.append((value.op, value.args[1]))
+        value = value.args[0]
+    if value != name:
+        return None
+    result = ZERO
+    for op, part in reversed(parts):
+        result = add(result, part) if op == "+" else sub(result, part)
+    return result
 
 
 def _none_of(branches: Iterable[Branch]) -> Term:
     return conjunction([negate(b.condition) for b in branches])
-
-
-def app_if(condition: Term, then: Term, otherwise: Term) -> Term:
-    return Term("if", (condition, then, otherwise), sort="bool" if then.is_formula else "real")
 
 
 def primed_base(name: Term) -> Term | None:

@@ -264,6 +264,7 @@ class Walk:
 
     def _join(self, p: Path, ways: Sequence[tuple[Term, Block, str]], span: Span) -> Path:
         branches = []
+        sight = frozenset(self.names.sorts)
         for condition, block, case in ways:
             event = Event(
                 "take the branch", case, span, facts=(Fact(condition, f"the branch where {case}", None, span),)
@@ -271,7 +272,9 @@ class Walk:
             inside = p.then(event, case)
             (end,) = self._block(block, [inside])
             branches.append(Branch(condition, case, end.events[len(inside.events) :]))
-        return p.then(joined(branches, "the branches together, " + ways[0][2], span))
+        state = self.names.next_state()
+        words = f"the branches together, {ways[0][2]} or not; the state after them is @{state}"
+        return p.then(joined(branches, words, span, sight, lambda n: var(f"{n.name}@{state}", n.sort)))
 
     # -------------------------------------------------------------- loops and stages
     def _loop(self, s: Loop, paths: list[Path]) -> list[Path]:
