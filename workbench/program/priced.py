@@ -10,7 +10,7 @@ In claims a primed name (`time'`) is the value at the end; in statements there a
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import Literal, TypeAlias
+from typing import TypeAlias
 
 from workbench.algebra.terms import Sort, Term
 from workbench.errors import Span
@@ -165,7 +165,9 @@ class Using:
 
 @dataclass(frozen=True, slots=True)
 class Claim:
-    """`formula` is the full one (short forms expanded); `text` is what the author wrote, or a short form for an inferred one."""
+    """`formula` is the full one (short forms expanded); `text` is what the author wrote, or a short form for an
+    inferred one.
+    """
 
     label: str
     formula: Term

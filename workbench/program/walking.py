@@ -331,7 +331,8 @@ class Walk:
         for end in self._walk(s.body, [begun]):
             self._only_changes(end, s.changed, self._sight(s.scope))
             for given in spec.givens:
-                self.owing.owe(end, "given", given, s.span, f"given of {spec.label}, kept by its body", also_evident=True)
+                words = f"given of {spec.label}, kept by its body"
+                self.owing.owe(end, "given", given, s.span, words, also_evident=True)
             if s.variable is None:
                 self.owing.site_of_loop(begun, end, spec)
             self.owing.claims(end.then(again), spec)
