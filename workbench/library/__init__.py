@@ -1,0 +1,1 @@
+"""The sheets of a codebase: which uses which, what lies where."""

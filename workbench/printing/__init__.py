@@ -1,0 +1,1 @@
+"""What is shown outside of the screens: messages and derivations."""
