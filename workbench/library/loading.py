@@ -15,6 +15,7 @@ from workbench.errors import Problem, Span
 from workbench.sheet.checking import check_names
 from workbench.sheet.cursor import line_of
 from workbench.sheet.reader import Reading, decode_sheet, read_sheet
+from workbench.sheet.scopes import Doubts
 from workbench.sheet.tree import Routine, Sheet, Source, Use
 from workbench.sheet.walks import headers_in
 from workbench.sheet.words import LARGEST_SHEET, quoted, visible
@@ -103,13 +104,6 @@ class _File:
     problems: list[Problem]
     uses: list[tuple[Use, str]] = field(default_factory=list)
     gaps: bool = False  # a used sheet is missing, so that any name may come from it
-
-
-class _Everything:
-    """Holds every name."""
-
-    def __contains__(self, name: object) -> bool:
-        return True
 
 
 class _Library:
@@ -229,8 +223,8 @@ class _Library:
             if resolve(path, source.path) is None:
                 file.problems.append(_outside(file.shown, source.span, source.path))
         used = self._used(self._in_order(path), path)
-        doubtful = _Everything() if file.gaps else file.reading.doubtful
-        file.problems += check_names(file.shown, file.reading.sheet, used, _built_in_laws(), doubtful)
+        doubts = Doubts(everything=True) if file.gaps else file.reading.doubts
+        file.problems += check_names(file.shown, file.reading.sheet, used, _built_in_laws(), doubts)
 
     def _check_use(self, file: _File, path: str, use: Use, found: str) -> None:
         other = self.files[found]

@@ -212,6 +212,8 @@ class BodyChecking(Typing):
             self.require(value, class_of(sort), STATEMENT)
             return
         self._call(value.name, value.arguments, value.span)
+        if self.is_doubtful(value.name):
+            return  # its signature could not be read
         if symbol.sort is None:
             self.complain(value.span, f"the routine {quoted(value.name)} has no result to assign",
                           "call it as a statement of its own")  # fmt: skip

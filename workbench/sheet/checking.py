@@ -6,13 +6,13 @@ again; whether divisors are zero or numbers negative is not its affair.
 
 from __future__ import annotations
 
-from collections.abc import Container, Mapping
+from collections.abc import Mapping
 from types import MappingProxyType
 
 from workbench.errors import Problem, Span
 from workbench.sheet import tree
 from workbench.sheet.bodies import BodyChecking
-from workbench.sheet.scopes import AT_START, STATE, VALUES, Context, Symbol, kinds
+from workbench.sheet.scopes import AT_START, CERTAIN, STATE, VALUES, Context, Doubts, Enough, Symbol, kinds
 from workbench.sheet.types import class_of
 from workbench.sheet.walks import calls_in, names_in
 from workbench.sheet.words import nearest, quoted
@@ -21,16 +21,19 @@ NO_LAWS: Mapping[str, int] = MappingProxyType({})
 
 
 def check_names(path: str, sheet: tree.Sheet, used: Mapping[str, tree.Sheet], laws: Mapping[str, int] = NO_LAWS,
-                doubtful: Container[str] = frozenset()) -> list[Problem]:  # fmt: skip
+                doubts: Doubts = CERTAIN) -> list[Problem]:  # fmt: skip
     """Every mistake in names and types of one sheet, in the order of its text.
 
     `used` holds the sheets that it uses, directly or through others, used ones first. `laws` are the built-in laws that
-    a hint may name, with the number of their parameters. Of unknown names that are `doubtful`, because a part of the
-    text could not be read, nothing is said. The problems carry no source line: the text is not here.
+    a hint may name, with the number of their parameters. `doubts` come from the reading of a sheet with mistakes.
+    The problems carry no source line: the text is not here.
     """
-    checker = _SheetChecker(path, sheet, used, doubtful)
+    checker = _SheetChecker(path, sheet, used, doubts)
     checker.laws = laws
-    checker.check()
+    try:
+        checker.check()
+    except Enough:
+        pass  # the first of them are told
     return sorted(checker.problems, key=lambda p: p.span.start)
 
 
@@ -41,6 +44,7 @@ class _SheetChecker(BodyChecking):
     def check(self) -> None:
         self.gather()
         for item in self.sheet.items:
+            self.begin(item)
             match item:
                 case tree.Source():
                     self.check_source(item)
@@ -62,6 +66,7 @@ class _SheetChecker(BodyChecking):
                     self._budget(item)
                 case tree.Pool():
                     self._pool(item)
+        self.begin(None)
         self._constants_in_a_circle()
         self._charges_of_calls()
 
@@ -173,7 +178,7 @@ class _SheetChecker(BodyChecking):
             if routine is None or not isinstance(routine.item, tree.Routine) or span is None:
                 continue
             bound = [b.name for b in routine.item.bindings]
-            if name not in bound and name not in self.doubtful:
+            if name not in bound and not self.is_doubtful(name) and not self.is_doubtful(callee):
                 self._charge_names_nothing(name, callee, bound, span)
                 return
 

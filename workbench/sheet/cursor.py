@@ -10,6 +10,8 @@ from workbench.sheet.lexer import BAD, END_OF_TEXT, NAME, NEWLINE, NUMBER, STRIN
 from workbench.sheet.tree import Name
 from workbench.sheet.words import ITEM_WORDS, MOST_PROBLEMS, NESTING, RESERVED, quoted
 
+EVERYWHERE = -1  # in `Cursor.unsure`: a declaration for the whole sheet was lost
+
 
 class Mistake(Exception):
     """Something is wrong at a place; reading goes on after it. Never leaves the reader."""
@@ -46,7 +48,9 @@ class Cursor:
         self.token = self.tokens[0]
         self.depth = 0  # blocks and brackets that are open
         self.problems: list[Problem] = []
-        self.doubtful: set[str] = set()
+        self.doubtful: set[str] = set()  # names in stretches that could not be read
+        self.unsure: set[int] = set()  # where items start in which a declaration was lost
+        self.item_start = 0  # of the item that is being read
         self._line_of_last_problem: tuple[int, str] = (0, "")
 
     # -------------------------------------------------------------- moving
@@ -102,6 +106,12 @@ class Cursor:
             raise Mistake(token, f"'{token.text}' is a word of the language and cannot be {what}",
                           "choose another name")  # fmt: skip
         return self.expect(NAME, what)
+
+    def declared_name(self, what: str, for_all: bool = False) -> str:
+        """Takes the name in a declaration; where it is lost, any unknown name of the item (or sheet) may be the one."""
+        if self.token.kind != NAME:
+            self.unsure.add(EVERYWHERE if for_all else self.item_start)
+        return self.expect_name(what).text
 
     def skip_newlines(self) -> None:
         while self.token.kind == NEWLINE:
@@ -161,11 +171,12 @@ class Cursor:
         passed = []
         while self.token.kind not in (NEWLINE, END_OF_TEXT, *stops):
             passed.append(self.advance())
-        self.doubt(passed)
         return passed
 
-    def doubt(self, tokens: list[Token]) -> None:
-        self.doubtful.update(t.text for t in tokens if t.kind == NAME)
+    def doubt(self, start: int) -> None:
+        """Nothing more is said of the names since that token, which could not be read: they may be declared there."""
+        self.doubtful.update(t.text for t in self.tokens[start : self.at] if t.kind == NAME)
+
 
     def hole(self, first: Token) -> Name:
         """Stands where an expression could not be read; such a sheet has problems and is used for nothing else."""

@@ -74,6 +74,7 @@ class ExpressionReader(Cursor):
         self.blocks = 0  # open blocks, which leave the less room for the depth of expressions
         self.in_claim = False
         self.in_charge = False
+        self.excused = -1  # the token at which a word may be missing: a mistake before it has been told
 
     # -------------------------------------------------------------- what the grammar calls
     def formula(self) -> Expr:
@@ -260,9 +261,10 @@ class ExpressionReader(Cursor):
 
     def _number(self) -> Number:
         token = self.advance()
-        if self.token.start == token.end and self.token.kind not in LEVELS and self.token.text[:1].isalnum():
-            raise Mistake(token, f"the number {quoted(token.text)} runs into {quoted(self.token.text)}",
-                          "put an operator or a space between them; a name begins with a letter")  # fmt: skip
+        after = self.token
+        if after.start == token.end and after.kind not in LEVELS and (after.kind == "(" or after.text[:1].isalnum()):
+            raise Mistake(token, f"the number {quoted(token.text)} runs into {quoted(after.text)}",
+                          "put an operator between them, such as *; a name begins with a letter")  # fmt: skip
         return Number(number_value(token), token.text, self.since(token))
 
     def _arguments(self) -> list[_Part]:
@@ -350,6 +352,7 @@ class ExpressionReader(Cursor):
         except Mistake as mistake:
             self.record(mistake)
             self.skip_line(*stops)
+            self.excused = self.at
             return self.hole(first)
 
 

@@ -7,8 +7,8 @@ from collections.abc import Callable
 from fractions import Fraction
 from typing import Any
 
-from workbench.sheet.cursor import Mistake, TooDeep
-from workbench.sheet.lexer import END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING, Token
+from workbench.sheet.cursor import EVERYWHERE, Mistake, TooDeep
+from workbench.sheet.lexer import END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING
 from workbench.sheet.statements import StatementReader
 from workbench.sheet.tree import (
     Binding,
@@ -31,7 +31,7 @@ from workbench.sheet.tree import (
     Tariff,
     Use,
 )
-from workbench.sheet.words import EVENTS, ITEM_WORDS, nearest, quoted
+from workbench.sheet.words import EVENTS, ITEM_WORDS, nearest_word, quoted
 
 UNIT = re.compile(r"[^\W_]+(?:[\w/%^-]*)|[/%^-][\w/%^-]*")  # letters, digits and / % ^ - _ in a run
 TARIFF_WORDS = ("counter", "gauge", "on")
@@ -58,10 +58,11 @@ class ItemReader(StatementReader):
             self.skip_newlines()
             if self.token.kind == END_OF_TEXT:
                 return Sheet(title, tuple(items), self.since(first))
-            start = self.token
+            start = self.at
             try:
-                items.append(self._item())
+                item = self._item()
                 self._end_of_item()
+                items.append(item)
             except Mistake as mistake:
                 self.record(mistake)
                 self._next_item(start)
@@ -85,40 +86,45 @@ class ItemReader(StatementReader):
     def _item(self) -> Item:
         token = self.token
         self.suspect = None
+        self.item_start = token.start
         if token.text in self._items and token.kind != STRING:
             return self._items[token.text]()
         if token.kind == "end":
             raise Mistake(token, "this 'end' closes nothing", "delete it, or look for what was closed too early above")
         if token.text == "sheet":
             raise Mistake(token, "the title stands first, and once")
-        near = nearest(token.text, sorted(ITEM_WORDS)) if token.kind == NAME else None
+        near = nearest_word(token.text, ITEM_WORDS) if token.kind == NAME else None
         if near is not None and self.next.kind in (NAME, STRING):
             self.complain(token, f"{quoted(token.text)} begins no item", f"is '{near}' meant?")
             self.token = token._replace(text=near)
             return self._items[near]()
+        if token.kind == STRING:
+            self.unsure.add(EVERYWHERE)  # perhaps the path of a 'use'
         raise self.expected("an item", "items begin with " + ", ".join(sorted(ITEM_WORDS)))
 
     def _end_of_item(self) -> None:
-        if self.token.kind not in (NEWLINE, END_OF_TEXT) and self.previous.kind != "end":
+        if self.token.kind not in (NEWLINE, END_OF_TEXT) and self.previous.kind != "end" and not self.begins_line():
             raise self.expected("the end of the line")
 
-    def _next_item(self, start: Token) -> None:
+    def _next_item(self, start: int) -> None:
         """Goes on at the next line that begins an item."""
-        before = self.at
-        if self.token is start:
+        if self.at == start:
             self.advance()
-        while self.token.kind != END_OF_TEXT and not self.at_item():
+        while self.token.kind != END_OF_TEXT and not (self.at_item() and self._at_edge()):
             self.advance()
-        first = next((i for i in range(before, -1, -1) if self.tokens[i].start <= start.start), 0)
-        self.doubt(self.tokens[first : self.at])
+        self.doubt(start)
+
+    def _at_edge(self) -> bool:
+        """A `source` may be a line of a header, too: those are indented."""
+        return self.token.kind != "source" or self.token.column == 1
 
     # -------------------------------------------------------------- declarations
     def _use(self) -> Item:
         first = self.advance()
         return Use(self.string("the path of another sheet"), self.since(first))
 
-    def _typed(self, what: str) -> tuple[str, Any]:
-        name = self.expect_name(what).text
+    def _typed(self, what: str, for_all: bool = True) -> tuple[str, Any]:
+        name = self.declared_name(what, for_all)
         self.expect(":", mend="a name is declared with its type: n: nat")
         return name, self.sort()
 
@@ -144,7 +150,7 @@ class ItemReader(StatementReader):
             if found:
                 self.expect(",", "',' or ')'")
             first = self.token
-            name, sort = self._typed("the name of a parameter")
+            name, sort = self._typed("the name of a parameter", for_all=False)
             found.append(Parameter(name, sort, self.since(first)))
         self.advance()
         return tuple(found)
@@ -152,7 +158,7 @@ class ItemReader(StatementReader):
     def _function(self) -> Item:
         """"function" NAME "(" params ")" ":" type [ "measure" sum ] "=" expr [ "given" formula ]"""
         first = self.advance()
-        name = self.expect_name("the name of a function").text
+        name = self.declared_name("the name of a function", for_all=True)
         parameters = self._parameters()
         self.expect(":", mend="a function has a type: function f(n: nat): nat = …")
         sort = self.sort()
@@ -165,7 +171,7 @@ class ItemReader(StatementReader):
     def _law(self) -> Item:
         """"law" NAME "(" params ")" [ "given" formula ] ":" formula [ "by" "induction" "on" NAME [ "from" INT ] ]"""
         first = self.advance()
-        name = self.expect_name("the name of a law").text
+        name = self.declared_name("the name of a law", for_all=True)
         parameters = self._parameters()
         given = self.formula() if self.take("given") else None
         self.expect(":")
@@ -188,28 +194,32 @@ class ItemReader(StatementReader):
             self.skip_newlines()
             if self.token.kind in ("end", END_OF_TEXT) or self.at_item():
                 break
-            line = self.token
+            start = self.at
             try:
-                found.append(self._tariff_line())
+                read = self._tariff_line()
+                if read is None:
+                    continue
                 if self.token.kind not in (NEWLINE, END_OF_TEXT, "end") and self.token.line == self.previous.line:
                     raise self.expected("the end of the line")
+                found.append(read)
             except Mistake as mistake:
                 self.in_charge = False
                 self.record(mistake)
-                self.doubt(self.tokens[max(0, self.at - 3) : self.at + 1])
-                if self.token is line:
+                if self.at == start:
                     self.advance()
                 self.skip_line("end")
+                self.doubt(start)
         self.close(first)
         return Tariff(name, tuple(found), self.since(first))
 
-    def _tariff_line(self) -> Counter | Gauge | On:
+    def _tariff_line(self) -> Counter | Gauge | On | None:
+        """One line; None where a misspelt word was set right."""
         first = self.token
         if self.take_word("counter"):
-            name, unit = self.expect_name("the name of a counter").text, self._unit()
+            name, unit = self._resource_declared("the name of a counter"), self._unit()
             return Counter(name, unit, self.since(first))
         if self.take_word("gauge"):
-            name, unit = self.expect_name("the name of a gauge").text, self._unit()
+            name, unit = self._resource_declared("the name of a gauge"), self._unit()
             clock = self.expect_name("the name of a counter").text if self.take_word("over") else None
             return Gauge(name, unit, clock, self.since(first))
         if self.take_word("on"):
@@ -219,18 +229,24 @@ class ItemReader(StatementReader):
             while self.take(","):
                 charges.append(self._charge())
             return On(event, tuple(charges), self.since(first))
-        near = nearest(first.text, TARIFF_WORDS) if first.kind == NAME else None
+        near = nearest_word(first.text, (*TARIFF_WORDS, "end")) if first.kind == NAME else None
         if near:
             self.complain(first, f"{quoted(first.text)} begins no line of a tariff", f"is '{near}' meant?")
-            self.token = first._replace(text=near)
-            return self._tariff_line()
+            self.token = self.tokens[self.at] = first._replace(kind=near if near == "end" else NAME, text=near)
+            return None
         raise self.expected("'counter', 'gauge', 'on' or 'end'")
+
+    def _resource_declared(self, what: str) -> str:
+        if self.is_word("in") and self.next.kind != NEWLINE and self.next.text not in ("in", "over"):
+            self.unsure.add(EVERYWHERE)
+            raise self.expected(what)
+        return self.declared_name(what, for_all=True)
 
     def _event(self) -> Any:
         token = self.token
         if token.text in EVENTS:
             return self.advance().text
-        near = nearest(token.text, EVENTS)
+        near = nearest_word(token.text, EVENTS)
         raise self.expected("'call', 'declare', 'assign' or 'test'", f"is '{near}' meant?" if near else None)
 
     def _unit(self) -> str | None:
@@ -264,23 +280,28 @@ class ItemReader(StatementReader):
     # -------------------------------------------------------------- routines
     def _routine(self) -> Item:
         """"routine" NAME "(" params ")" [ "->" type ] [ "with" … ] NL header "is" NL block "end" """
-        first = self.advance()
+        start, first = self.at, self.advance()
         name, name_span = "", self.since(first)
         parameters: tuple[Parameter, ...] = ()
         result: Sort | None = None
         bindings: tuple[Binding, ...] = ()
         try:
-            token = self.expect_name("the name of a routine")
-            name, name_span = token.text, self.since(token)
+            token = self.token
+            name = self.declared_name("the name of a routine", for_all=True)
+            name_span = self.since(token)
+            if self.token.kind != "(":
+                self.unsure.add(EVERYWHERE)  # where the name ends is not known
+            self.unsure.add(first.start)
             parameters = self._parameters()
+            self.unsure.discard(first.start)
             result = self.sort() if self.take("->") else None
             bindings = self._bindings(self.formula) if self.take_word("with") else ()
             if self.token.kind not in (NEWLINE, END_OF_TEXT, "is"):
                 raise self.expected("the end of the line")
         except Mistake as mistake:
             self.record(mistake)
-            self.doubt(self.tokens[max(0, self.at - 50) : self.at])
             self.skip_line("is")
+            self.doubt(start)
         header = self.header()
         self.open_block("is", first)
         body = self.block(first)

@@ -48,8 +48,8 @@ ALIASES = {
 # After one of these a newline is white space.
 CONTINUED = frozenset(LEVELS) | {":=", "->", ",", ":", "(", ".", "not"}
 
-# These cannot stand inside brackets: a line that begins so shows that a bracket was never closed.
-_OUTSIDE = (STATEMENT_WORDS - {"if", "then", "else", "for", "from", "to", "size"}) | HEADER_WORDS
+# These cannot go on with an expression: a line that begins so shows that the one before it is not finished.
+_OUTSIDE = (STATEMENT_WORDS - {"if", "then", "else", "from", "to", "size"}) | HEADER_WORDS
 
 
 def tokens_of(text: str) -> list[Token]:
@@ -90,10 +90,10 @@ def without_idle_newlines(tokens: list[Token]) -> list[Token]:
             if before == NEWLINE:
                 continue
             if depth and token.text != ";":
-                if not _begins_anew(tokens, at + 1):
+                if tokens[at + 1].kind == "for" or not _begins_anew(tokens, at + 1):
                     continue
                 depth = 0
-            elif before in CONTINUED and token.text != ";":
+            elif before in CONTINUED and token.text != ";" and not _begins_anew(tokens, at + 1):
                 continue
         elif kind == "(":
             depth += 1
@@ -105,7 +105,7 @@ def without_idle_newlines(tokens: list[Token]) -> list[Token]:
 
 
 def _begins_anew(tokens: list[Token], at: int) -> bool:
-    """Whether the token can only begin a statement or an item, so that an open bracket before it was forgotten."""
+    """Whether the token can only begin a line, so that something before it was forgotten (`for` goes on in a sum)."""
     token = tokens[at]
     if token.kind in _OUTSIDE:
         return True

@@ -8,9 +8,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from workbench.errors import Problem, SheetError, Span
-from workbench.sheet.cursor import Enough, Mistake, TooDeep, line_of
+from workbench.sheet.cursor import EVERYWHERE, Enough, Mistake, TooDeep, line_of
 from workbench.sheet.items import ItemReader
 from workbench.sheet.lexer import END_OF_TEXT
+from workbench.sheet.scopes import CERTAIN, Doubts
 from workbench.sheet.tree import Expr, Sheet
 from workbench.sheet.words import LARGEST_SHEET
 
@@ -19,12 +20,12 @@ from workbench.sheet.words import LARGEST_SHEET
 class Reading:
     """The sheet, as far as it could be read, and every mistake found in its text.
 
-    `doubtful` holds the names in stretches that could not be read: what is said of them elsewhere may be wrong.
+    `doubts` says which names may be declared in stretches that could not be read.
     """
 
     sheet: Sheet
     problems: tuple[Problem, ...]
-    doubtful: frozenset[str] = frozenset()
+    doubts: Doubts = CERTAIN
 
 
 def decode_sheet(data: bytes, path: str) -> tuple[str | None, tuple[Problem, ...]]:
@@ -51,7 +52,9 @@ def read_sheet(text: str, path: str) -> Reading:
         sheet = reader.sheet()
     except Enough:
         sheet = Sheet(None, ())
-    return Reading(sheet, tuple(sorted(reader.problems, key=lambda p: p.span.start)), frozenset(reader.doubtful))
+    problems = tuple(sorted(reader.problems, key=lambda p: p.span.start))
+    doubts = Doubts(frozenset(reader.doubtful), frozenset(reader.unsure), EVERYWHERE in reader.unsure)
+    return Reading(sheet, problems, doubts)
 
 
 def read_formula(text: str, in_claim: bool = True) -> Expr:

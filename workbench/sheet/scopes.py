@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Container, Iterable, Mapping
+from collections.abc import Collection, Iterable, Mapping
 from dataclasses import dataclass, replace
 from typing import Literal, TypeAlias
 
@@ -14,6 +14,10 @@ Kind: TypeAlias = Literal[
     "constant", "state variable", "function", "law", "counter", "gauge", "routine",
     "parameter", "binding", "variable", "note", "loop variable", "bound variable",
 ]  # fmt: skip
+
+
+class Enough(Exception):
+    """As many problems as are told in one go. Never leaves the checker."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,14 +91,29 @@ def _resources(tariff: tree.Tariff, path: str | None) -> Iterable[Symbol]:
             yield Symbol("gauge", line.name, "real", line.span, line, path)
 
 
+@dataclass(frozen=True, slots=True)
+class Doubts:
+    """What may be declared where a sheet could not be read: some names, any name in the items that start at some
+    offsets, or any name at all. Nothing is said of such names, so that one mistake is one message."""
+
+    names: frozenset[str] = frozenset()
+    items: frozenset[int] = frozenset()
+    everything: bool = False
+
+
+CERTAIN = Doubts()
+
+
 class Scope:
     """Names and problems of one sheet that is being checked. Problems carry no source line: the text is not here."""
 
-    def __init__(self, path: str, sheet: tree.Sheet, used: Mapping[str, tree.Sheet], doubtful: Container[str]) -> None:
+    def __init__(self, path: str, sheet: tree.Sheet, used: Mapping[str, tree.Sheet], doubts: Doubts) -> None:
         self.path = path
         self.sheet = sheet
         self.used = used
-        self.doubtful = doubtful
+        self.doubts = doubts
+        self.item_start = -1  # of the item that is being checked
+        self._told: set[str] = set()  # names that are unknown in this item
         self.problems: list[Problem] = []
         self.globals: dict[str, Symbol] = {}
         self.locals: dict[str, Symbol] = {}
@@ -103,12 +122,9 @@ class Scope:
 
     # -------------------------------------------------------------- complaining
     def complain(self, span: Span, message: str, mend: str | None = None) -> None:
-        if len(self.problems) < MOST_PROBLEMS:
-            self.problems.append(Problem(self.path, span, message, mend))
-
-    @property
-    def is_full(self) -> bool:
-        return len(self.problems) >= MOST_PROBLEMS
+        if len(self.problems) >= MOST_PROBLEMS:
+            raise Enough
+        self.problems.append(Problem(self.path, span, message, mend))
 
     # -------------------------------------------------------------- names of the sheet
     def gather(self) -> None:
@@ -171,10 +187,19 @@ class Scope:
     # -------------------------------------------------------------- names that are not found
     def unknown(self, span: Span, name: str, what: str, kinds: Collection[str]) -> None:
         """Says that nothing has this name, and what is nearest. Of doubtful names nothing is said."""
-        if not name or name in self.doubtful or self.is_full:
+        if not name or self.is_doubtful(name) or name in self._told:
             return
+        self._told.add(name)
         near = nearest(name, (s.name for s in self._all() if s.kind in kinds))
         self.complain(span, f"there is no {what} {quoted(name)}", f"is {quoted(near)} meant?" if near else None)
+
+    def begin(self, item: tree.Item | None) -> None:
+        """Another item is checked from here on, or None alone."""
+        self.item_start = item.span.start if item is not None else -1
+        self._told.clear()
+
+    def is_doubtful(self, name: str) -> bool:
+        return self.doubts.everything or name in self.doubts.names or self.item_start in self.doubts.items
 
     def _all(self) -> Iterable[Symbol]:
         yield from self.locals.values()

@@ -36,7 +36,7 @@ from workbench.sheet.tree import (
     Var,
     While,
 )
-from workbench.sheet.words import HEADER_WORDS, SORTS, STATEMENT_WORDS, nearest, quoted
+from workbench.sheet.words import HEADER_WORDS, LEVELS, SORTS, STATEMENT_WORDS, nearest_word, quoted
 
 CLOSERS = frozenset(("end", "else", "elif"))  # what ends a block
 HINTS = ("cases", "using")
@@ -64,13 +64,15 @@ class StatementReader(ExpressionReader):
             self.skip_newlines()
             if self.token.kind in CLOSERS or self.token.kind == END_OF_TEXT or self.at_item():
                 break
-            first = self.token
+            start = self.at
             try:
-                found.append(self._statement())
+                statement = self._statement()
                 self.end_of_line()
+                found.append(statement)
             except Mistake as mistake:
                 self.record(mistake)
-                self._resume(first)
+                self._resume(start)
+                self.doubt(start)
         self.blocks -= 1
         self.leave()
         return tuple(found)
@@ -90,7 +92,7 @@ class StatementReader(ExpressionReader):
         """A misspelt word is read as the right one, so that what it opens is closed."""
         token = self.token
         if token.kind == NAME:
-            near = nearest(token.text, sorted(STATEMENT_WORDS))
+            near = nearest_word(token.text, STATEMENT_WORDS)
             if near in self._statements:
                 self.complain(token, f"{quoted(token.text)} begins no statement", f"is '{near}' meant?")
                 self.token = token._replace(kind=near)
@@ -113,21 +115,26 @@ class StatementReader(ExpressionReader):
             return
         raise self.expected("the end of the line", "statements stand on lines of their own, or ';' between them")
 
-    def _resume(self, first: Token) -> None:
+    def _resume(self, start: int) -> None:
         """Goes on after a statement that could not be read; a block that it opened is read and dropped."""
-        self.doubt([t for t in self.tokens[max(0, self.at - 50) : self.at] if t.start >= first.start])
-        if self.token is first:
+        if self.at == start:
             self.advance()
         passed = self.skip_line(*CLOSERS)
         while self.token.kind == "else" and any(t.kind == "then" for t in passed):
             self.advance()  # of an `if` that is a value
             passed = self.skip_line(*CLOSERS)
-        if not (passed and passed[-1].kind in OPENERS and self.token.kind == NEWLINE):
+        if self.token.kind != NEWLINE:
             return
-        before, opener = self.at, passed[-1]
+        if self.next.kind in HEADER_WORDS or self.next.kind in OPENERS:  # of a loop or stage that was not seen as one
+            self.header()
+            self.skip_newlines()
+            opener = self.advance() if self.token.kind in OPENERS else self.token
+        elif passed and passed[-1].kind in OPENERS:
+            opener = passed[-1]
+        else:
+            return
         self.block(opener)
         self._drop_branches(opener)
-        self.doubt(self.tokens[before : self.at])
         self.close(opener)
 
     def _drop_branches(self, opener: Token) -> None:
@@ -156,8 +163,9 @@ class StatementReader(ExpressionReader):
     def open_block(self, word: str, opener: Token) -> None:
         """Takes `then`, `do` or `is`; where it is missing, says so and goes on as if it stood there."""
         missing = self.expected(f"'{word}'", f"the block of {quoted(opener.text)} begins with '{word}'")
+        excused = self.excused == self.at
         self.skip_newlines()
-        if not self.take(word):
+        if not self.take(word) and not excused:
             self.record(missing)
 
     # -------------------------------------------------------------- statements
@@ -192,7 +200,7 @@ class StatementReader(ExpressionReader):
 
     def _note(self) -> Statement:
         first = self.advance()
-        name = self.expect_name("the name of a note").text
+        name = self.declared_name("the name of a note")
         self.expect("=", mend="a note is written: note NAME = …")
         return Note(name, self.formula(), self.since(first))
 
@@ -239,8 +247,10 @@ class StatementReader(ExpressionReader):
         low: Expr = self.hole(first)
         high: Expr = self.hole(first)
         try:
-            variable = self.expect_name("the variable of a loop").text
+            variable = self.declared_name("the variable of a loop")
             self.expect("from", mend="a loop is written: for i from 0 below n do")
+            if self.is_word("below") and self.next.kind not in ("to", *LEVELS) and self.next.text != "below":
+                raise self.expected("the loop's first value")
             low = self.formula()
             inclusive = self.is_word("to")
             if not (self.take("to") or self.take_word("below")):
@@ -263,7 +273,7 @@ class StatementReader(ExpressionReader):
         """"nat" | "int" | "real" | "bool" """
         token = self.token
         if token.kind not in SORTS:
-            near = nearest(token.text, sorted(SORTS)) if token.kind == NAME else None
+            near = nearest_word(token.text, SORTS) if token.kind == NAME else None
             raise self.expected("a type", f"is '{near}' meant?" if near else "the types are nat, int, real and bool")
         self.advance()
         sort: Sort = token.kind  # type: ignore[assignment]
@@ -272,7 +282,7 @@ class StatementReader(ExpressionReader):
     def _var(self) -> Statement:
         """"var" NAME ":" type [ "size" sum ] [ ":=" value ]"""
         first = self.advance()
-        name = self.expect_name("the name of a variable").text
+        name = self.declared_name("the name of a variable")
         self.expect(":", mend="a variable is declared with its type: var n: nat")
         sort = self.sort()
         size = self.sum() if self.take("size") else None
@@ -298,9 +308,9 @@ class StatementReader(ExpressionReader):
         amount: Expr = self.hole(first)
         gauge = ""
         try:
-            amount = self.formula()
-            gauge = self.resource_name("hold")
+            amount, name = self.formula(), self.resource_name("hold")
             self.expect("do", mend="hold … do … end gives the amount back at its end; 'acquire' keeps it")
+            gauge = name
         except Mistake as mistake:
             self.record(mistake)
             self.skip_line("do")
@@ -328,9 +338,13 @@ class StatementReader(ExpressionReader):
         while True:
             newline = self.token.kind == NEWLINE or self.begins_line()
             self.skip_newlines()
+            if newline and self.token.kind not in HEADER_WORDS and not self._ends_header():
+                self._mend_header_word()
             first = self.token
-            if first.kind not in HEADER_WORDS or (first.kind == "source" and self.at_item() and self._ends_header()):
-                break
+            if first.kind == NEWLINE:
+                continue
+            if first.kind not in HEADER_WORDS:
+                return Header(tuple(found))
             try:
                 if not newline:
                     raise Mistake(first, f"'{first.kind}' begins a line of its own")
@@ -339,11 +353,32 @@ class StatementReader(ExpressionReader):
                 found.append(readers[first.kind]())
             except Mistake as mistake:
                 self._skip_header_line(mistake)
-        return Header(tuple(found))
+                if first.kind == "claim":
+                    self._hints()
 
     def _ends_header(self) -> bool:
-        """A `source` at the left edge, outside of blocks, is an item: the routine before it has lost its body."""
-        return self.token.column == 1
+        """Whether a statement, the end of a block or an item begins here."""
+        kind = self.token.kind
+        if kind == NAME:
+            return self.next.kind in (":=", "(", "=") or self.at_item()
+        return kind in STATEMENT_WORDS or kind in ("result", END_OF_TEXT)
+
+    def _mend_header_word(self) -> None:
+        """A misspelt word at the begin of a header's line is read as the right one, a bare label as a claim's."""
+        token = self.token
+        if token.kind == NAME and self.next.kind == ":":
+            self.complain(token, f"{quoted(token.text)} begins no line of a header", f"claim {token.text[:20]}: …")
+            self.at -= 1  # the newline before it stands for the word that is missing
+            self.token = token._replace(kind="claim")
+            return
+        near = nearest_word(token.text, HEADER_WORDS | {"is", "do"}) if token.kind == NAME else None
+        if near is not None:
+            self.complain(token, f"{quoted(token.text)} begins no line of a header", f"is '{near}' meant?")
+            self.token = self.tokens[self.at] = token._replace(kind=near)
+        else:
+            mend = "a header's lines begin with given, claim, measure or source; its block with is or do"
+            self.record(self.expected("a line of a header", mend))
+            self.skip_line("is", "do")
 
     def _skip_header_line(self, mistake: Mistake) -> None:
         self.record(mistake)
@@ -374,6 +409,9 @@ class StatementReader(ExpressionReader):
         formula_span, span = self.since(start), self.since(first)
         self.in_claim = False
         self._header_line()
+        return Claim(label, formula, self._hints(), span, formula_span)
+
+    def _hints(self) -> tuple[CasesHint | UsingHint, ...]:
         hints: list[CasesHint | UsingHint] = []
         while self.token.kind == NEWLINE and self.next.kind in HINTS:
             self.advance()
@@ -381,7 +419,7 @@ class StatementReader(ExpressionReader):
                 hints.append(self._hint())
             except Mistake as mistake:
                 self._skip_header_line(mistake)
-        return Claim(label, formula, tuple(hints), span, formula_span)
+        return tuple(hints)
 
     def _hint(self) -> CasesHint | UsingHint:
         first = self.advance()

@@ -203,7 +203,7 @@ class Typing(Scope):
 
     def _check_clock(self, gauge: Symbol, aspect: str, span: Span) -> None:
         item = gauge.item
-        if isinstance(item, tree.Gauge) and item.clock is None:
+        if isinstance(item, tree.Gauge) and item.clock is None and not self.is_doubtful(gauge.name):
             self.complain(span, f"the gauge {quoted(gauge.name)} is over no counter, so it has no {aspect}",
                           f"declare it with its clock: gauge {gauge.name[:20]} over time")  # fmt: skip
 
@@ -242,6 +242,8 @@ class Typing(Scope):
         if routine is None or not context.result:
             self.complain(expr.span, f"'result' means nothing in {context.where}")
             return UNKNOWN
+        if routine.result is None and self.is_doubtful(routine.name):
+            return UNKNOWN  # its signature could not be read
         if routine.result is None:
             self.complain(expr.span, f"the routine {quoted(routine.name)} has no result",
                           f"declare it: routine {routine.name[:20]}(…) -> nat")  # fmt: skip
@@ -290,7 +292,7 @@ class Typing(Scope):
             self.require(argument, class_of(parameter.sort), context)
         for argument in arguments[len(parameters) :]:
             self.typed(argument, context)
-        if len(parameters) != len(arguments):
+        if len(parameters) != len(arguments) and not self.is_doubtful(name):
             listed = ", ".join(f"{p.name}: {p.sort}" for p in parameters[:8])
             self.complain(span, f"{quoted(name)} takes {counted(len(parameters))}, found {len(arguments)}",
                           f"its parameters are ({listed})" if parameters else "write () after it")  # fmt: skip

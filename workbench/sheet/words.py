@@ -80,7 +80,13 @@ def quoted(text: str) -> str:
     return f"'{visible(text[:SHOWN])}…'" if len(text) > SHOWN else f"'{visible(text)}'"
 
 
-def nearest(word: str, known: Iterable[str]) -> str | None:
+def nearest_word(word: str, words: Iterable[str]) -> str | None:
+    """The word of the language that is most like a misspelt one; stricter than for names, since it changes how what
+    follows is read."""
+    return nearest(word, sorted(words), likeness=0.7)
+
+
+def nearest(word: str, known: Iterable[str], likeness: float = 0.6) -> str | None:
     """The known name that is most like the word, if any is."""
     from difflib import get_close_matches
     from itertools import islice
@@ -88,5 +94,7 @@ def nearest(word: str, known: Iterable[str]) -> str | None:
     if len(word) > SHOWN:
         return None
     candidates = {k.lower(): k for k in islice(known, CANDIDATES) if len(k) <= SHOWN and k != word}
-    found = get_close_matches(word.lower(), candidates, n=1, cutoff=0.6)
+    letters = sorted(word.lower())
+    found = [k for k in candidates if len(k) == len(word) and sorted(k) == letters]  # two letters swapped, most often
+    found = found or get_close_matches(word.lower(), candidates, n=1, cutoff=likeness)
     return candidates[found[0]] if found else None
