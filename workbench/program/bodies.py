@@ -31,8 +31,8 @@ from workbench.sheet import tree
 class Body:
     """The priced body of one routine.
 
-    Names that no author can write hold a dot: `i.last` is the last value of a loop's variable, `n.entry` a parameter's value
-    at the start, `window.room` what a declaration holds.
+    Names that no author can write hold a dot: `i.last` is the last value of a loop's variable, `n.entry` a
+    parameter's value at the start, `window.room` what a declaration holds.
     """
 
     def __init__(
@@ -172,7 +172,8 @@ class Body:
 
     # -------------------------------------------------------------- branches and loops
     def _if(
-        self, branches: tuple[tuple[tree.Expr, tree.Block], ...], otherwise: tree.Block | None, names: Locals, span: Span
+        self, branches: tuple[tuple[tree.Expr, tree.Block], ...], otherwise: tree.Block | None, names: Locals, span:
+        Span
     ) -> Sequence[Statement]:
         """Each test is charged where it is reached."""
         rest: Block = () if otherwise is None else self._scope(otherwise, names)
@@ -189,7 +190,9 @@ class Body:
         return (Loop(spec, test, names.term(s.condition), body, names.scope(), frozenset(), s.span),)
 
     def _for(self, s: tree.For, names: Locals) -> Sequence[Statement]:
-        """The bounds are evaluated once. The loop's variable is declared, assigned, tested and stepped at the tariff's prices."""
+        """The bounds are evaluated once. The loop's variable is declared, assigned, tested and stepped at the
+        tariff's prices.
+        """
         outside, names = names, names.inner()
         low, high = outside.term(s.low), outside.term(s.high)
         before: list[Statement] = []
@@ -282,7 +285,9 @@ def _sort_of(value: Term) -> Sort:
 
 
 def _assigned(block: tree.Block) -> frozenset[str]:
-    """Names assigned anywhere in a block, loops' variables among them; a declaration counts, since it may stand in a loop."""
+    """Names assigned anywhere in a block, loops' variables among them; a declaration counts, since it may stand in a
+    loop.
+    """
     found: set[str] = set()
     work = list(block)
     while work:

@@ -63,6 +63,8 @@ class Locals:
 def bound_names(
     bindings: tuple[tree.Binding, ...], parameters: Mapping[str, Sort], sheet: Globals, entry: Mapping[Term, Term]
 ) -> dict[str, Term]:
-    """What the `with` names stand for: expressions over parameters' entry values, by the names that `entry` gives them."""
+    """What the `with` names stand for: expressions over parameters' entry values, by the names that `entry` gives
+    them.
+    """
     local = Locals(sheet, dict(parameters))
     return {b.name: substitute(local.term(b.value), entry) for b in bindings}

@@ -13,18 +13,18 @@ from workbench.program.priced import (
     Block,
     Constant,
     Counter,
+    Either,
     Function,
     Gauge,
     Hold,
     If,
-    Either,
     Law,
     Loop,
     Program,
     Routine,
     Stage,
-    StateVariable,
     Statement,
+    StateVariable,
     Variable,
 )
 from workbench.program.specifications import specification
@@ -159,14 +159,16 @@ def _variables(parameters: tuple[tree.Parameter, ...]) -> tuple[Variable, ...]:
 
 # ---------------------------------------------------------------- what changes, once all bodies are known
 def _settled(program: Program) -> dict[str, Routine]:
-    """What each routine changes, through calls too: the least sets that hold each other up; then the same of loops and stages."""
+    """What each routine changes, through calls too: the least sets that hold each other up; then the same of loops
+    and stages.
+    """
     shared = set(program.states) | set(program.counters)
     for g in program.gauges.values():
         shared |= {g.name, f"{g.name}.peak", f"{g.name}.area"}
     changed: dict[str, frozenset[str]] = dict.fromkeys(program.routines, frozenset())
     while True:
         now = {
-            n: changed_by(r.body, program.gauges, lambda c: changed[c]) & shared for n, r in program.routines.items()
+            n: changed_by(r.body, program.gauges, changed.__getitem__) & shared for n, r in program.routines.items()
         }
         if now == changed:
             break
