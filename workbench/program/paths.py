@@ -58,12 +58,16 @@ class Path:
         facts = tuple(Fact(substitute(f.formula, self.state, memo), f.origin, f.lean, f.span) for f in event.facts)
         return Path(
             state,
-            self.facts + tuple(f for f in facts if f.formula.op != "true"),
+            self.facts + tuple(f for f in facts if not _says_nothing(f.formula)),
             (*self.events, event),
             self.middle | event.middle,
             self.leans | event.leans,
             (*self.case, case) if case else self.case,
         )
+
+
+def _says_nothing(formula: Term) -> bool:
+    return formula.op == "true" or (formula.op in ("=", "<=", ">=", "iff") and formula.args[0] == formula.args[1])
 
 
 def summary(events: Sequence[Event]) -> Path:

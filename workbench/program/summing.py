@@ -147,7 +147,8 @@ class _Summing:
                 seen.add(formula)
                 relation = "=" if exact else "<="
                 value = Term("if", (app("<=", self.variable, self.upper), top, num(0)))
-                made.append(self._claim(f"peak {gauge}", relation, formula, f"peak {gauge} {relation} {show(value)}"))
+                label = f"peak {gauge}" if not made else f"peak {gauge} ({len(made) + 1})"
+                made.append(self._claim(label, relation, formula, f"peak {gauge} {relation} {show(value)}"))
         return made
 
     def _area(self, gauge: str) -> list[Claim]:
@@ -293,6 +294,8 @@ class _Solved:
         self.not_negative: list[Poly] = []
         for fact in path.facts:
             self._learn(fact.formula)
+        for fact in path.facts:
+            self._learn_under_condition(fact.formula)
 
     def _learn(self, formula: Term) -> None:
         work = [formula]
@@ -307,6 +310,14 @@ class _Solved:
                 for here, there, op in ((f.args[0], f.args[1], f.op), (f.args[1], f.args[0], _turned(f.op))):
                     if here.op == "var" and "@" in here.name and here.name not in names(there):
                         self._note(self.algebra.variable_atom(here.name, here.sort), there, op)
+
+    def _learn_under_condition(self, formula: Term) -> None:
+        """What an implication says, where the facts decide its condition at sight."""
+        while formula.op == "implies":
+            if self._settled(self.algebra.normal(formula.args[0])) != UNITY:
+                return
+            formula = formula.args[1]
+            self._learn(formula)
 
     def _note(self, atom: Atom, value: Term, op: str) -> None:
         if op == "=":
@@ -391,13 +402,21 @@ class _Solved:
             slope = poly.coefficient(atom)
             if slope is None:
                 continue
-            known = self.above if (slope > 0) == up else self.below
-            bounds = list(known.get(atom, []))
-            for b in bounds:
-                return self.algebra.rewrite(poly, {atom: self.algebra.normal(b)})
-            if known is self.below and atom.nonneg:
+            at_most = (slope > 0) == up
+            bounds = (self.above if at_most else self.below).get(atom, [])
+            if bounds:
+                return self.algebra.rewrite(poly, {atom: self._tightest(bounds, at_most=at_most)})
+            if not at_most and atom.nonneg:
                 return self.algebra.rewrite(poly, {atom: constant(0)})
         return None
+
+    def _tightest(self, bounds: Sequence[Term], *, at_most: bool) -> Poly:
+        best, *others = map(self.algebra.normal, bounds)
+        for b in others:
+            difference = minus(best, b) if at_most else minus(b, best)
+            if difference.nonneg:
+                best = b
+        return best
 
     def _strange(self, atom: Atom) -> bool:
         name = str(atom.data[0] if atom.kind == "var" else atom.data[1])

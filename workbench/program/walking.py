@@ -11,6 +11,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 
 from workbench.algebra.formulas import show
+from workbench.algebra.normal import Algebra
 from workbench.algebra.terms import Sort, Term, app, conjunction, names, negate, substitute, var
 from workbench.errors import Span, UllageError
 from workbench.program import specifying
@@ -406,11 +407,16 @@ class Walk:
         """Whoever comes after relies on it that nothing else in sight has changed."""
         for name, value in end.state.items():
             seen = name.name in sight or self.names.is_resource(name.name)
-            if seen and value != name and name.name not in changed:
+            if seen and name.name not in changed and not _same(value, name):
                 raise NotAccounted(f"{self.routine.name} changes {name.name}, which pricing did not see")
 
     def _declare(self, name: str, sort: Sort) -> None:
         self.names.sorts[name] = sort
+
+
+def _same(value: Term, name: Term) -> bool:
+    """What a hold took and gave back leaves the level as it was."""
+    return value == name or Algebra().normal(value) == Algebra().normal(name)
 
 
 def _count(block: Block) -> int:

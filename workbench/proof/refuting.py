@@ -33,9 +33,13 @@ class Trial:
 def tried(obligation: Obligation, functions: Mapping[str, Definition], tries: int, seed: int = 1) -> Trial:
     """Small values and edges, by exact evaluation."""
     facts = [f.formula for f in obligation.facts]
-    goal = compile_term(obligation.goal, functions)
+    try:
+        goal = compile_term(obligation.goal, functions)
+        sampler = Sampler(facts, [obligation.goal], functions, seed)
+    except TooLarge:
+        return Trial(None, True)  # too long to evaluate: nothing is known
     reached = False
-    for values in Sampler(facts, [obligation.goal], functions, seed).draw(tries):
+    for values in sampler.draw(tries):
         reached = True
         try:
             if not goal(values):
