@@ -12,13 +12,14 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field, replace
 
 from workbench.errors import Problem, Span
+from workbench.proof.laws import built_in_laws
 from workbench.sheet.checking import check_names
 from workbench.sheet.cursor import line_of
 from workbench.sheet.reader import Reading, decode_sheet, read_sheet
 from workbench.sheet.scopes import Doubts
 from workbench.sheet.tree import Routine, Sheet, Source, Use
 from workbench.sheet.walks import headers_in
-from workbench.sheet.words import LARGEST_SHEET, quoted, visible
+from workbench.sheet.words import LARGEST_SHEET, MOST_PROBLEMS, quoted, visible
 
 ROOT_MARKS = (".ullage-root", ".git")
 MOST_SHEETS = 1_000  # that one sheet may use in all: a codebase of a thousand routines has about as many
@@ -110,6 +111,7 @@ class _Library:
     def __init__(self, read: Callable[[str], bytes]) -> None:
         self.read = read
         self.files: dict[str, _File] = {}
+        self.laws = {law.name: len(law.parameters) for law in built_in_laws()}
 
     def load(self, path: str, text: str | None) -> Loaded:
         top = os.path.realpath(path)
@@ -119,7 +121,7 @@ class _Library:
         for name in order:
             self._check(name)
         file = self.files[top]
-        problems = sorted(file.problems, key=lambda p: (p.span.line, p.span.column))
+        problems = sorted(file.problems, key=lambda p: (p.span.line, p.span.column))[:MOST_PROBLEMS]
         sheet = file.reading.sheet if file.reading is not None else None
         return Loaded(path, file.text, sheet, tuple(_with_line(p, file.text) for p in problems), self._used(order, top))
 
@@ -224,7 +226,7 @@ class _Library:
                 file.problems.append(_outside(file.shown, source.span, source.path))
         used = self._used(self._in_order(path), path)
         doubts = Doubts(everything=True) if file.gaps else file.reading.doubts
-        file.problems += check_names(file.shown, file.reading.sheet, used, _built_in_laws(), doubts)
+        file.problems += check_names(file.shown, file.reading.sheet, used, self.laws, doubts)
 
     def _check_use(self, file: _File, path: str, use: Use, found: str) -> None:
         other = self.files[found]
@@ -256,12 +258,6 @@ def _sources(sheet: Sheet) -> Iterator[Source]:
         elif isinstance(item, Routine):
             for header in headers_in(item):
                 yield from (i for i in header.items if isinstance(i, Source))
-
-
-def _built_in_laws() -> dict[str, int]:
-    from workbench.proof.laws import built_in_laws
-
-    return {law.name: len(law.parameters) for law in built_in_laws()}
 
 
 def _with_line(problem: Problem, text: str) -> Problem:

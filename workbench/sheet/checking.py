@@ -83,19 +83,21 @@ class _SheetChecker(BodyChecking):
                  for i in self.sheet.items if isinstance(i, tree.Constant) and i.value is not None}  # fmt: skip
         done: set[str] = set()
         for start, first in needs.items():
-            path = [start]
+            path, on_path = [start], {start}
             rest = {start: iter(first)}
             while path:
                 following = next((n for n in rest[path[-1]] if n in needs and n not in done), None)
                 if following is None:
+                    on_path.discard(path[-1])
                     done.add(path.pop())
-                elif following in path:
+                elif following in on_path:
                     span = self.globals[following].span
                     self.complain(span, f"the value of the constant {quoted(following)} needs itself")
                     done.update(path)
                     break
                 else:
                     path.append(following)
+                    on_path.add(following)
                     rest[following] = iter(needs[following])
 
     def _parameters(self, parameters: tuple[tree.Parameter, ...], hidden: bool) -> None:
@@ -219,6 +221,13 @@ class _SheetChecker(BodyChecking):
         else:
             self.unknown(item.span, item.routine, "routine", ("routine",))
         self.forget(mark)
+        self._given(item, free)
+
+    def _given(self, item: tree.Budget | tree.Pool, free: list[str]) -> None:
+        """Each binding is of a constant, or of a free name in the arguments."""
+        symbol = self.globals.get(item.routine)
+        parameters = symbol.item.parameters if symbol is not None and isinstance(symbol.item, tree.Routine) else ()
+        sorts = {a.name: p.sort for a, p in zip(item.arguments, parameters, strict=False) if isinstance(a, tree.Name)}
         seen: set[str] = set()
         for b in item.bindings:
             bound = self.globals.get(b.name)
@@ -229,7 +238,8 @@ class _SheetChecker(BodyChecking):
                 self.complain(b.span, f"{quoted(b.name)} is neither a constant nor a name in the arguments",
                               f"the names in the arguments are {listed}" if listed else None)  # fmt: skip
             seen.add(b.name)
-            self.typed(b.value, Context("a binding", VALUES))
+            sort = bound.sort if bound is not None and bound.kind == "constant" else sorts.get(b.name, "real")
+            self.require(b.value, class_of(sort), Context("a binding", VALUES))
 
     def _is_free(self, name: str) -> bool:
         symbol = self.globals.get(name)

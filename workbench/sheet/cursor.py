@@ -6,7 +6,7 @@ A mistake is raised where it is seen and recorded where reading can go on: at th
 from __future__ import annotations
 
 from workbench.errors import Problem, Span
-from workbench.sheet.lexer import BAD, END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING, Token, read_tokens
+from workbench.sheet.lexer import BAD, END_OF_TEXT, NAME, NEWLINE, NUMBER, STRING, Token, read_tokens, token_of
 from workbench.sheet.tree import Name
 from workbench.sheet.words import ITEM_WORDS, MOST_PROBLEMS, NESTING, RESERVED, quoted
 
@@ -43,9 +43,10 @@ class Cursor:
     def __init__(self, text: str, path: str) -> None:
         self.text = text
         self.path = path
-        self.tokens = read_tokens(text)
-        self.at = 0
-        self.token = self.tokens[0]
+        self._tokens = read_tokens(text)
+        self._last = len(self._tokens) - 1
+        self.at = 0  # the number of the present token
+        self.token = self.previous = token_of(self._tokens[0])
         self.depth = 0  # blocks and brackets that are open
         self.problems: list[Problem] = []
         self.doubtful: set[str] = set()  # names in stretches that could not be read
@@ -57,19 +58,25 @@ class Cursor:
     def advance(self) -> Token:
         """Takes the present token; the last one can be taken again and again."""
         token = self.token
-        if token.kind != END_OF_TEXT:
+        if self.at < self._last:
             self.at += 1
-            self.token = self.tokens[self.at]
+            self.previous = token
+            self.token = token_of(self._tokens[self.at])
         return token
+
+    def correct(self, kind: str, text: str | None = None) -> None:
+        """Reads the present token as the one that was meant."""
+        self.token = self.token._replace(kind=kind, text=self.token.text if text is None else text)
+        self._tokens[self.at] = (*self.token,)
+
+    @property
+    def next_kind(self) -> str:
+        return self._tokens[min(self.at + 1, self._last)][0]
 
     @property
     def next(self) -> Token:
         """The token after the present one."""
-        return self.tokens[min(self.at + 1, len(self.tokens) - 1)]
-
-    @property
-    def previous(self) -> Token:
-        return self.tokens[max(self.at - 1, 0)]
+        return token_of(self._tokens[min(self.at + 1, self._last)])
 
     def take(self, kind: str) -> bool:
         """Takes the present token if it is of that kind."""
@@ -120,7 +127,8 @@ class Cursor:
     # -------------------------------------------------------------- places
     def since(self, first: Token) -> Span:
         """The stretch from that token to the last one taken."""
-        return Span(first.start, max(first.start, self.previous.end), first.line, first.column)
+        end = self.previous.end
+        return Span(first.start, end if end > first.start else first.start, first.line, first.column)
 
     def begins_line(self) -> bool:
         return self.at == 0 or self.previous.kind == NEWLINE
@@ -130,7 +138,7 @@ class Cursor:
         token = self.token
         if token.text not in ITEM_WORDS or not self.begins_line():
             return False
-        return self.next.kind in (NAME, STRING) or self.next.kind in RESERVED
+        return self.next_kind in (NAME, STRING) or self.next_kind in RESERVED
 
     def enter(self, token: Token) -> None:
         self.depth += 1
@@ -173,9 +181,17 @@ class Cursor:
             passed.append(self.advance())
         return passed
 
+    def skip_to(self, words: frozenset[str]) -> None:
+        """Goes on to the next token that is one of the words, at least by one."""
+        at = min(self.at + 1, self._last)
+        while at < self._last and self._tokens[at][1] not in words:
+            at += 1
+        self.at, self.previous = at, token_of(self._tokens[at - 1])
+        self.token = token_of(self._tokens[at])
+
     def doubt(self, start: int) -> None:
         """Nothing more is said of the names since that token, which could not be read: they may be declared there."""
-        self.doubtful.update(t.text for t in self.tokens[start : self.at] if t.kind == NAME)
+        self.doubtful.update(text for kind, text, *_ in self._tokens[start : self.at] if kind == NAME)
 
 
     def hole(self, first: Token) -> Name:
@@ -205,7 +221,7 @@ def described(token: Token) -> str:
 
 def bad_token(token: Token) -> Mistake:
     """What is wrong with a character that no token begins with."""
-    character = token.text
+    character = token.text[0]  # of a run of one character
     if character == '"':
         return Mistake(token, "this text is never closed", 'write " before the line ends')
     if character == "_":

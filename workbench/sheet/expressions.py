@@ -45,6 +45,9 @@ from workbench.sheet.words import (
     quoted,
 )
 
+PREFIXES = ASPECTS | {"-", "not"}
+MOST_PENDING = TALLEST + len(set(LEVELS.values()))  # operators that wait for operands: more lean right too deep
+
 
 class _Part(NamedTuple):
     """An operand so far. `nest`: the tree's depth, left edges of binary operators apart; `chain`: their number."""
@@ -94,12 +97,16 @@ class ExpressionReader(Cursor):
         parts: list[_Part] = []
         pending: list[_Pending] = []
         while True:
-            while self._prefix(pending, lowest):
+            while self.token.kind in PREFIXES and self._prefix(pending, lowest):
                 pass
-            parts.append(self._operand(lowest))
+            part = self._operand(lowest)
             level = LEVELS.get(self.token.kind, 0)
             if level < lowest:
+                if not pending:
+                    return part
+                parts.append(part)
                 break
+            parts.append(part)
             while pending and (pending[-1].level > level or (pending[-1].level == level and level not in RIGHT)):
                 if level == COMPARE == pending[-1].level:
                     break
@@ -109,6 +116,8 @@ class ExpressionReader(Cursor):
                 self._lengthen(pending[-1], token)
             else:
                 pending.append(_Pending(level, token))
+                if len(pending) > MOST_PENDING:
+                    raise TooDeep(token)
         while pending:
             self._reduce(parts, pending)
         return parts[0]
@@ -133,7 +142,7 @@ class ExpressionReader(Cursor):
             pending.append(self._short_head(pending))
         else:
             return False
-        if len(pending) > LONGEST_CHAIN:
+        if len(pending) > MOST_PENDING:
             raise TooDeep(token)
         return True
 
@@ -248,7 +257,7 @@ class ExpressionReader(Cursor):
 
     def _named(self) -> _Part:
         token = self.token
-        if self.next.kind == "(":
+        if self.next_kind == "(":
             return self._application()
         self.advance()
         name = token.text
@@ -277,6 +286,8 @@ class ExpressionReader(Cursor):
                     raise self._unclosed(first)
                 self.advance()
             found.append(self._parse(IMPLIES))
+            if len(found) > LONGEST_CHAIN:
+                raise Mistake(first, f"more than {LONGEST_CHAIN:,} arguments")
         self.advance()
         self.leave()
         return found
@@ -320,7 +331,7 @@ class ExpressionReader(Cursor):
 
     def _word_between(self, word: str) -> None:
         """Newlines next to `then` and `else` mean nothing."""
-        if self.token.kind == NEWLINE and self.next.kind == word:
+        if self.token.kind == NEWLINE and self.next_kind == word:
             self.advance()
         self.expect(word, mend="as a value, 'if' has both 'then' and 'else'")
         self.skip_newlines()
@@ -363,6 +374,8 @@ def _too_long(token: Token) -> Mistake:
 def number_value(token: Token) -> Fraction:
     """The exact value of a number as written. Raises Mistake where it is too large to be handled."""
     text = token.text.replace("_", "")
+    if len(text) <= LARGEST_DIGITS and text.isdecimal():
+        return Fraction(int(text))
     factor = 1
     if text.endswith("iB"):
         factor, text = SUFFIXES[text[-3:]], text[:-3].rstrip()

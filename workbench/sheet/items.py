@@ -33,7 +33,7 @@ from workbench.sheet.tree import (
 )
 from workbench.sheet.words import EVENTS, ITEM_WORDS, nearest_word, quoted
 
-UNIT = re.compile(r"[^\W_]+(?:[\w/%^-]*)|[/%^-][\w/%^-]*")  # letters, digits and / % ^ - _ in a run
+UNIT = re.compile(r"[\w/%^-]+")  # letters, digits and / % ^ - _ in a run
 TARIFF_WORDS = ("counter", "gauge", "on")
 
 
@@ -94,9 +94,9 @@ class ItemReader(StatementReader):
         if token.text == "sheet":
             raise Mistake(token, "the title stands first, and once")
         near = nearest_word(token.text, ITEM_WORDS) if token.kind == NAME else None
-        if near is not None and self.next.kind in (NAME, STRING):
+        if near is not None and self.next_kind in (NAME, STRING):
             self.complain(token, f"{quoted(token.text)} begins no item", f"is '{near}' meant?")
-            self.token = token._replace(text=near)
+            self.correct(NAME, near)
             return self._items[near]()
         if token.kind == STRING:
             self.unsure.add(EVERYWHERE)  # perhaps the path of a 'use'
@@ -111,7 +111,7 @@ class ItemReader(StatementReader):
         if self.at == start:
             self.advance()
         while self.token.kind != END_OF_TEXT and not (self.at_item() and self._at_edge()):
-            self.advance()
+            self.skip_to(ITEM_WORDS)
         self.doubt(start)
 
     def _at_edge(self) -> bool:
@@ -232,12 +232,12 @@ class ItemReader(StatementReader):
         near = nearest_word(first.text, (*TARIFF_WORDS, "end")) if first.kind == NAME else None
         if near:
             self.complain(first, f"{quoted(first.text)} begins no line of a tariff", f"is '{near}' meant?")
-            self.token = self.tokens[self.at] = first._replace(kind=near if near == "end" else NAME, text=near)
+            self.correct(near if near == "end" else NAME, near)
             return None
         raise self.expected("'counter', 'gauge', 'on' or 'end'")
 
     def _resource_declared(self, what: str) -> str:
-        if self.is_word("in") and self.next.kind != NEWLINE and self.next.text not in ("in", "over"):
+        if self.is_word("in") and self.next_kind != NEWLINE and self.next.text not in ("in", "over"):
             self.unsure.add(EVERYWHERE)
             raise self.expected(what)
         return self.declared_name(what, for_all=True)

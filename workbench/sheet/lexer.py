@@ -7,7 +7,9 @@ it stands where a unit may be.
 from __future__ import annotations
 
 import re
-from typing import NamedTuple
+from collections.abc import Callable
+from functools import partial
+from typing import NamedTuple, TypeAlias
 
 from workbench.sheet.words import HEADER_WORDS, ITEM_WORDS, LEVELS, RESERVED, STATEMENT_WORDS
 
@@ -25,6 +27,10 @@ class Token(NamedTuple):
     column: int
 
 
+# As tokens are kept: the fields of a Token in a plain tuple, which the garbage collector need not look through.
+Raw: TypeAlias = tuple[str, str, int, int, int, int]
+token_of: Callable[[Raw], Token] = partial(tuple.__new__, Token)  # faster than Token._make, which is felt
+
 _TOKEN = re.compile(
     r"""[ \t]*(?:
       (?P<newline>\n|\r\n|;)
@@ -35,7 +41,7 @@ _TOKEN = re.compile(
     | (?P<string>"[^"\n]*")
     | (?P<sign>:=|->|<=|>=|!=|[-+*/^=<>(),:.'≤≥≠×·÷∧∨¬⇒′])
     | (?P<text_end>\Z)
-    | (?P<bad>.)
+    | (?P<bad>(?P<same>.)(?P=same)*)
     )""",
     re.VERBOSE | re.DOTALL,
 )
@@ -52,48 +58,48 @@ CONTINUED = frozenset(LEVELS) | {":=", "->", ",", ":", "(", ".", "not"}
 _OUTSIDE = (STATEMENT_WORDS - {"if", "then", "else", "from", "to", "size"}) | HEADER_WORDS
 
 
-def tokens_of(text: str) -> list[Token]:
+def tokens_of(text: str) -> list[Raw]:
     """All tokens of the text, comments left out, newlines as they stand; END_OF_TEXT last."""
-    found: list[Token] = []
+    found: list[Raw] = []
     line, line_start = 1, 0
     for match in _TOKEN.finditer(text):
-        group = match.lastgroup
-        start, end = match.span(group)  # type: ignore[arg-type]
-        word = match[group]  # type: ignore[index]
-        column = start - line_start + 1
+        group = match.lastgroup or BAD
         if group == "comment":
             continue
+        word, end = match[group], match.end()
+        start = end - len(word)
+        column = start - line_start + 1
         if group == "name":
             kind = word if word in RESERVED else NAME
         elif group == "sign":
             kind = ALIASES.get(word, word)
         elif group == "text_end":
-            found.append(Token(END_OF_TEXT, "", start, end, line, column))
+            found.append((END_OF_TEXT, "", start, end, line, column))
             break
         else:
-            kind = group or BAD  # newline, number, string, bad
-        found.append(Token(kind, word, start, end, line, column))
+            kind = group  # newline, number, string, bad
+        found.append((kind, word, start, end, line, column))
         if kind == NEWLINE and word != ";":
             line, line_start = line + 1, end
     return found
 
 
-def without_idle_newlines(tokens: list[Token]) -> list[Token]:
+def without_idle_newlines(tokens: list[Raw]) -> list[Raw]:
     """The tokens without newlines that are white space: inside ( ), after a trailing operator, comma or colon, and all
     but one of several in a row. (Those next to block words are the reader's affair.)"""
-    kept: list[Token] = []
+    kept: list[Raw] = []
     depth = 0
     before = NEWLINE
     for at, token in enumerate(tokens):
-        kind = token.kind
+        kind = token[0]
         if kind == NEWLINE:
             if before == NEWLINE:
                 continue
-            if depth and token.text != ";":
-                if tokens[at + 1].kind == "for" or not _begins_anew(tokens, at + 1):
+            if depth and token[1] != ";":
+                if tokens[at + 1][0] == "for" or not _begins_anew(tokens, at + 1):
                     continue
                 depth = 0
-            elif before in CONTINUED and token.text != ";" and not _begins_anew(tokens, at + 1):
+            elif before in CONTINUED and token[1] != ";" and not _begins_anew(tokens, at + 1):
                 continue
         elif kind == "(":
             depth += 1
@@ -104,14 +110,12 @@ def without_idle_newlines(tokens: list[Token]) -> list[Token]:
     return kept
 
 
-def _begins_anew(tokens: list[Token], at: int) -> bool:
+def _begins_anew(tokens: list[Raw], at: int) -> bool:
     """Whether the token can only begin a line, so that something before it was forgotten (`for` goes on in a sum)."""
-    token = tokens[at]
-    if token.kind in _OUTSIDE:
-        return True
-    return token.text in ITEM_WORDS and tokens[at + 1].kind in (NAME, STRING)
+    kind, text = tokens[at][:2]
+    return kind in _OUTSIDE or (text in ITEM_WORDS and tokens[at + 1][0] in (NAME, STRING))
 
 
-def read_tokens(text: str) -> list[Token]:
+def read_tokens(text: str) -> list[Raw]:
     """What the reader reads: `tokens_of` the text without idle newlines."""
     return without_idle_newlines(tokens_of(text))

@@ -82,9 +82,9 @@ class StatementReader(ExpressionReader):
         if read is not None:
             return read()
         if self.token.kind == NAME:
-            if self.next.kind == "(":
+            if self.next_kind == "(":
                 return self._call()
-            if self.next.kind in (":=", "="):
+            if self.next_kind in (":=", "="):
                 return self._assign()
         return self._no_statement()
 
@@ -95,11 +95,11 @@ class StatementReader(ExpressionReader):
             near = nearest_word(token.text, STATEMENT_WORDS)
             if near in self._statements:
                 self.complain(token, f"{quoted(token.text)} begins no statement", f"is '{near}' meant?")
-                self.token = token._replace(kind=near)
+                self.correct(near)
                 return self._statements[near]()
-            if near in CLOSERS and self.next.kind in (NEWLINE, END_OF_TEXT):
+            if near in CLOSERS and self.next_kind in (NEWLINE, END_OF_TEXT):
                 self.complain(token, f"{quoted(token.text)} is no statement", f"is '{near}' meant?")
-                self.token = self.tokens[self.at] = token._replace(kind=near)
+                self.correct(near)
                 return Skip(self.since(token))
             mend = f"{token.text}(…) is a call, {token.text} := … an assignment" if len(token.text) < 20 else None
             raise Mistake(self.next, f"expected '(' or ':=' after {quoted(token.text)}", mend)
@@ -125,7 +125,7 @@ class StatementReader(ExpressionReader):
             passed = self.skip_line(*CLOSERS)
         if self.token.kind != NEWLINE:
             return
-        if self.next.kind in HEADER_WORDS or self.next.kind in OPENERS:  # of a loop or stage that was not seen as one
+        if self.next_kind in HEADER_WORDS or self.next_kind in OPENERS:  # of a loop or stage that was not seen as one
             self.header()
             self.skip_newlines()
             opener = self.advance() if self.token.kind in OPENERS else self.token
@@ -191,7 +191,7 @@ class StatementReader(ExpressionReader):
 
     def _value(self) -> Value:
         """expr | "any" [ "where" formula ]"""
-        ends = self.next.kind in (NEWLINE, END_OF_TEXT) or self.next.kind in CLOSERS or self.next.text == "where"
+        ends = self.next_kind in (NEWLINE, END_OF_TEXT) or self.next_kind in CLOSERS or self.next.text == "where"
         if not (self.is_word("any") and ends):
             return self.formula()
         first = self.advance()
@@ -249,7 +249,7 @@ class StatementReader(ExpressionReader):
         try:
             variable = self.declared_name("the variable of a loop")
             self.expect("from", mend="a loop is written: for i from 0 below n do")
-            if self.is_word("below") and self.next.kind not in ("to", *LEVELS) and self.next.text != "below":
+            if self.is_word("below") and self.next_kind not in ("to", *LEVELS) and self.next.text != "below":
                 raise self.expected("the loop's first value")
             low = self.formula()
             inclusive = self.is_word("to")
@@ -288,7 +288,7 @@ class StatementReader(ExpressionReader):
         size = self.sum() if self.take("size") else None
         if self.token.kind == "=":
             self.complain(self.token, "'=' compares; an assignment is written with ':='", f"write: {sort} := …")
-            self.token = self.token._replace(kind=":=")
+            self.correct(":=")
         value = self._value() if self.take(":=") else None
         return Var(name, sort, size, value, self.since(first))
 
@@ -360,21 +360,21 @@ class StatementReader(ExpressionReader):
         """Whether a statement, the end of a block or an item begins here."""
         kind = self.token.kind
         if kind == NAME:
-            return self.next.kind in (":=", "(", "=") or self.at_item()
+            return self.next_kind in (":=", "(", "=") or self.at_item()
         return kind in STATEMENT_WORDS or kind in ("result", END_OF_TEXT)
 
     def _mend_header_word(self) -> None:
         """A misspelt word at the begin of a header's line is read as the right one, a bare label as a claim's."""
         token = self.token
-        if token.kind == NAME and self.next.kind == ":":
+        if token.kind == NAME and self.next_kind == ":":
             self.complain(token, f"{quoted(token.text)} begins no line of a header", f"claim {token.text[:20]}: …")
             self.at -= 1  # the newline before it stands for the word that is missing
-            self.token = token._replace(kind="claim")
+            self.correct("claim")
             return
         near = nearest_word(token.text, HEADER_WORDS | {"is", "do"}) if token.kind == NAME else None
         if near is not None:
             self.complain(token, f"{quoted(token.text)} begins no line of a header", f"is '{near}' meant?")
-            self.token = self.tokens[self.at] = token._replace(kind=near)
+            self.correct(near)
         else:
             mend = "a header's lines begin with given, claim, measure or source; its block with is or do"
             self.record(self.expected("a line of a header", mend))
@@ -400,7 +400,7 @@ class StatementReader(ExpressionReader):
         """"claim" [ NAME ":" ] cform NL { hint }"""
         first = self.advance()
         label = None
-        if self.next.kind == ":":
+        if self.next_kind == ":":
             label = self.expect_name("a label").text
             self.advance()
         start = self.token
@@ -413,7 +413,7 @@ class StatementReader(ExpressionReader):
 
     def _hints(self) -> tuple[CasesHint | UsingHint, ...]:
         hints: list[CasesHint | UsingHint] = []
-        while self.token.kind == NEWLINE and self.next.kind in HINTS:
+        while self.token.kind == NEWLINE and self.next_kind in HINTS:
             self.advance()
             try:
                 hints.append(self._hint())
