@@ -91,10 +91,16 @@ def _sort(data: str | int) -> Sort:
 
 def comparison(atom: Atom) -> Term:
     """What an indicator says: smaller side left, nothing negative on either."""
-    op = {"ge": "<=", "gt": "<", "eq": "="}[str(atom.data[0])]
-    right = Poly({m: c for m, c in atom.parts[0].terms.items() if c > 0})
-    left = scaled(minus(atom.parts[0], right), -1)
-    return app(op, term_of(left), term_of(right))
+    return related(atom.parts[0], {"ge": ">=", "gt": ">", "eq": "="}[str(atom.data[0])])
+
+
+def related(poly: Poly, relation: str) -> Term:
+    """poly >= 0, > 0 or = 0 as a comparison of two sides with nothing negative on either."""
+    right = Poly({m: c for m, c in poly.terms.items() if c > 0})
+    left = scaled(minus(poly, right), -1)
+    if relation == "=":
+        return app("=", term_of(right), term_of(left))
+    return app({">=": "<=", ">": "<"}[relation], term_of(left), term_of(right))
 
 
 def _indicator(formula: Term) -> Term:

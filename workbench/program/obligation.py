@@ -16,7 +16,7 @@ from workbench.program.priced import Using
 Kind: TypeAlias = Literal["claim", "given", "measure", "range", "domain", "choice"]
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, order=True)
 class Lean:
     """What a fact rests on: a claim of a specification, or with `claim` "" its side conditions.
 

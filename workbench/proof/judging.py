@@ -27,6 +27,7 @@ from workbench.proof.report import (
     SheetReport,
     Verdict,
     Whole,
+    Workings,
 )
 from workbench.proof.search import SECONDS, Stopped
 from workbench.proof.trying import Broken, broken_claims
@@ -105,7 +106,8 @@ class _Judge:
         )
         verdicts: list[str] = [r.verdict for r in reports] + [m.verdict for m in about]
         whole: Whole = "refuted" if "refuted" in verdicts else "open" if "open" in verdicts else "verified"
-        return SheetReport(self.program.path, whole, (), reports, about, self.program)
+        workings = Workings(self.decider.algebra, self.decider.laws, self.decider.definitions)
+        return SheetReport(self.program.path, whole, (), reports, about, self.program, workings)
 
     def _wanted(self) -> list[str]:
         """The sheet's own routines and all that they call."""
@@ -401,7 +403,8 @@ class _Judge:
         leans: dict[str, None] = {}
         if verdict == "open":
             for f in findings:
-                leans.update(dict.fromkeys(self._bad_leans(f, fallen)))
+                others = sorted(lean for lean in f.leans if self._has_fallen(lean, fallen) and lean != Lean(*key))
+                leans.update(dict.fromkeys(map(_lean_words, others)))
                 hinted = {f"law {u.law}" for u in f.obligation.using} & self._fallen_mathematics()
                 leans.update(dict.fromkeys(sorted(hinted)))
             name = r.owed.routine.name

@@ -75,6 +75,15 @@ class MathematicsReport:
 
 
 @dataclass(frozen=True, slots=True)
+class Workings:
+    """What the proofs of a sheet were found in, and are replayed in: certificates mean nothing elsewhere."""
+
+    algebra: Algebra
+    laws: Mapping[str, Law]
+    functions: Mapping[str, Definition]
+
+
+@dataclass(frozen=True, slots=True)
 class SheetReport:
     """One sheet: `problems` where it is unreadable, else the reports of what it defines itself (not of what it
     uses).
@@ -86,3 +95,4 @@ class SheetReport:
     routines: tuple[RoutineReport, ...] = ()
     mathematics: tuple[MathematicsReport, ...] = ()
     program: Program | None = None
+    workings: Workings | None = None

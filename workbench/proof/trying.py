@@ -8,7 +8,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 from workbench.algebra.evaluate import Definition, TooLarge, Undefined, compile_term
-from workbench.algebra.terms import var
+from workbench.algebra.terms import Rational, var
 from workbench.errors import UllageError
 from workbench.program.choosing import RandomChooser
 from workbench.program.obligations import Owed
@@ -20,9 +20,9 @@ from workbench.proof.sampling import Sampler, Value, Values
 # Runs of a routine; small inputs come first, so that most wrong claims fall at once.
 RUNS = 30
 # Events of one run: exponential routines are cut short, which loses nothing but late counterexamples.
-EVENT_LIMIT = 4_000
+EVENT_LIMIT = 1_500
 # Events of all runs of a routine.
-EVENT_BUDGET = 60_000
+EVENT_BUDGET = 12_000
 
 Key = tuple[str, str, str]  # routine, specification, claim label
 
@@ -36,23 +36,29 @@ class Broken:
 
 
 def broken_claims(program: Program, owed: Owed, definitions: Mapping[str, Definition]) -> dict[Key, Broken]:
-    """Claims of the routine, its loops and stages that some run breaks, with the first values found."""
+    """Claims of the routine, its loops and stages that some run breaks, with the smallest values found."""
     name = owed.routine.name
     tests: dict[str, list[tuple[Claim, Callable[[Mapping[str, Value]], Value]]]] = {
         label: [(c, compile_term(c.formula, definitions)) for c in spec.claims]
         for label, spec in owed.specifications.items()
     }
-    found: dict[Key, Broken] = {}
+    found: dict[Key, tuple[Rational, Broken]] = {}
     for activation in _activations(program, owed, definitions):
         if activation.routine != name:
             continue
         for claim, holds in tests.get(activation.specification, ()):
             key = (name, activation.specification, claim.label)
-            if key not in found:
-                values = _environment(activation)
-                if not _holds(holds, values):
-                    found[key] = Broken(tidied(dict(activation.start)), tidied(dict(activation.end)))
-    return found
+            size = _size(activation.start)
+            if key in found and found[key][0] <= size:
+                continue
+            if not _holds(holds, _environment(activation)):
+                found[key] = (size, Broken(tidied(dict(activation.start)), tidied(dict(activation.end))))
+    return {key: broken for key, (_, broken) in found.items()}
+
+
+def _size(values: Mapping[str, Value]) -> Rational:
+    """How far from nothing the values are: of all runs that break a claim the plainest one is shown."""
+    return sum(abs(v) for v in values.values())
 
 
 def _environment(activation: Activation) -> Values:
