@@ -107,9 +107,11 @@ def _obligation(d: Decided, workings: Workings) -> Iterator[str]:
         yield "    the program, from its last statement to its first"
         for line in made.program:
             yield from _step(line)
-    if o.facts:
-        yield "    known"
-        for number, fact in enumerate(o.facts, 1):
+    shown = [(i + 1, f) for i, f in enumerate(o.facts) if made.used is None or i in made.used]
+    if shown:
+        rest = len(o.facts) - len(shown)
+        yield "    known" + (f", and {rest} more that the proof does not need" if rest else "")
+        for number, fact in shown:
             lead = f"{number:3}  "
             yield from wrapped(f"{lead}{show(fact.formula)}   {{ {visible(fact.origin)} }}", WIDTH, 6, len(lead) + 4)
     yield "    to show"

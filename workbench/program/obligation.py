@@ -53,6 +53,10 @@ class Step:
     span: Span | None
 
 
+def _none(needed: Callable[[int], bool]) -> tuple[Step, ...]:
+    return ()
+
+
 @dataclass(frozen=True, slots=True)
 class Obligation:
     """facts => goal over start values and fresh names.
@@ -77,4 +81,4 @@ class Obligation:
     leans: frozenset[Lean] = frozenset()
     cases: tuple[Term, ...] = ()
     using: tuple[Using, ...] = ()
-    derive: Callable[[], tuple[Step, ...]] = field(default=tuple, compare=False, repr=False)
+    derive: Callable[[Callable[[int], bool]], tuple[Step, ...]] = field(default=_none, compare=False, repr=False)

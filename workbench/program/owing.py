@@ -11,10 +11,10 @@ from workbench.algebra.formulas import show
 from workbench.algebra.terms import Sort, Term, substitute, var
 from workbench.errors import Span
 from workbench.program import measures, specifying
-from workbench.program.deriving import program_steps
+from workbench.program.deriving import Needed, program_steps
 from workbench.program.domains import domain_conditions, nonnegative, of_sort
 from workbench.program.obligation import Kind, Obligation, Step
-from workbench.program.paths import Path
+from workbench.program.paths import Path, summary
 from workbench.program.priced import Cases, Claim, Program, Routine, Specification, Using
 
 
@@ -27,6 +27,9 @@ class Ground:
     label: str
     depth: int
     entry: Mapping[Term, Term]
+
+
+Derive = Callable[[Needed], tuple[Step, ...]]
 
 
 class Owing:
@@ -74,9 +77,15 @@ class Owing:
         if key in self._seen or (absolute in formulas and not also_evident):
             return
         self._seen.add(key)
-        events = p.events
+        events, start = p.events, len(p.facts) - len(summary(p.events).facts)
         self._add(
-            kind, claim, p, absolute, span, f"{words}{_case(p)}", lambda: program_steps(events, goal, is_claim=False)
+            kind,
+            claim,
+            p,
+            absolute,
+            span,
+            f"{words}{_case(p)}",
+            lambda needed: program_steps(start, events, goal, needed, is_claim=False),
         )
 
     def claims(self, end: Path, spec: Specification) -> None:
@@ -87,6 +96,7 @@ class Owing:
         if not spec.label and self.routine.result is not None:
             result = self.names.present("result")
             before[result] = end.value(result)
+        start = len(end.facts) - len(summary(end.events).facts)
         for claim in spec.claims:
             formula = claim.formula
             goal = specifying.instantiated(formula, before, end.value)
@@ -100,11 +110,11 @@ class Owing:
                         owed,
                         claim.span,
                         f"{condition.what}{_case(end)}",
-                        tuple,
+                        _nothing,
                         claim,
                         before,
                     )
-            events, shown = end.events, _with_result_primed(formula, before)
+            shown = _with_result_primed(formula, before)
             self._add(
                 "claim",
                 claim.label,
@@ -112,7 +122,7 @@ class Owing:
                 goal,
                 claim.span,
                 "; ".join(end.case) or "the only path",
-                lambda events=events, shown=shown: program_steps(events, shown, is_claim=True),
+                lambda needed, shown=shown: program_steps(start, end.events, shown, needed, is_claim=True),
                 claim,
                 before,  # type: ignore[misc]
             )
@@ -125,7 +135,7 @@ class Owing:
         goal: Term,
         span: Span,
         case: str,
-        derive: Callable[[], tuple[Step, ...]],
+        derive: Derive,
         claim: Claim | None = None,
         before: Mapping[Term, Term] | None = None,
     ) -> None:
@@ -212,3 +222,7 @@ def _case(p: Path) -> str:
 
 def _with_result_primed(formula: Term, before: dict[Term, Term]) -> Term:
     return substitute(formula, {r: var("result'", r.sort) for r in before})
+
+
+def _nothing(needed: Needed) -> tuple[Step, ...]:
+    return ()

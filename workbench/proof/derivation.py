@@ -44,6 +44,10 @@ from workbench.proof.kernel import (
 )
 from workbench.proof.laws import Law
 from workbench.proof.report import Decided
+from workbench.proof.search import Hints, Search
+
+# A proof that is looked for again with fewer facts is shorter to read; where it takes longer, the first one is shown.
+AGAIN_SECONDS = 0.5
 
 
 @dataclass(frozen=True, slots=True)
@@ -70,6 +74,7 @@ class Derivation:
 
     program: tuple[Line, ...]
     algebra: tuple[Line, ...]
+    used: tuple[int, ...] | None = None  # indices of the facts that the proof rests on; None where there is none
 
     @property
     def lines(self) -> tuple[Line, ...]:
@@ -80,20 +85,48 @@ def derivation(
     algebra: Algebra, laws: Mapping[str, Law], functions: Mapping[str, Definition], decided: Decided
 ) -> Derivation:
     """The derivation of a decided obligation, whatever its verdict."""
-    steps = decided.obligation.derive()
+    proof = decided.proof
+    used = proof.used if proof is not None else None
+    steps = decided.obligation.derive(lambda i: used is None or i in used)
     program = tuple(Line(s.move, s.words, s.before, s.after, span=s.span) for s in steps)
     goal = decided.obligation.goal
-    if decided.proof is not None:
-        chain = _chain(algebra, decided.proof)
-        return Derivation(program, tuple(chain or _replayed(algebra, laws, decided.proof)))
+    if proof is not None:
+        seen = _Seen(*_lean(algebra, laws, functions, decided, proof))
+        chain = _chain(algebra, seen)
+        return Derivation(program, tuple(chain or _replayed(algebra, laws, seen)), tuple(sorted(proof.used)))
     if decided.witness is not None:
         return Derivation(program, tuple(_refuted(goal, decided, functions)))
     return Derivation(program, tuple(_left_open(goal, decided)))
 
 
+@dataclass(frozen=True, slots=True)
+class _Seen:
+    """A proof and the numbers that its facts have for the reader."""
+
+    proof: Proved
+    numbers: tuple[int, ...]
+
+
+def _lean(
+    algebra: Algebra, laws: Mapping[str, Law], functions: Mapping[str, Definition], decided: Decided, proof: Proved
+) -> tuple[Proved, tuple[int, ...]]:
+    """The proof found again from the facts that it needs alone: without detours over the others."""
+    kept = sorted(proof.used)
+    if len(kept) < len(proof.facts):
+        o = decided.obligation
+        known = {name: laws[name] for name in functions if name in laws}
+        using = tuple((u.law, u.arguments) for u in o.using if u.law in laws)
+        search = Search(algebra, laws, known, seconds=AGAIN_SECONDS)
+        again = search.prove([proof.facts[i] for i in kept], proof.goal, Hints(o.cases, using, o.middle)).proved
+        if again is not None:
+            return again, tuple(i + 1 for i in kept)
+    return proof, tuple(range(1, len(proof.facts) + 1))
+
+
 # ---------------------------------------------------------------- equations as a chain
-def _chain(algebra: Algebra, proof: Proved) -> list[Line] | None:
+def _chain(algebra: Algebra, seen: _Seen) -> list[Line] | None:
     """left = … = right, where putting in equations is all that the proof does."""
+    proof = seen.proof
     if proof.goal.op != "=":
         return None
     state = start(algebra, proof.facts, proof.goal)
@@ -114,7 +147,7 @@ def _chain(algebra: Algebra, proof: Proved) -> list[Line] | None:
             if after != before and side == "left":
                 left = after
                 lines.append(
-                    Line("use a fact", f"{_facts(row, proof)}: {name.name} = {show(image)}", after=left, relation="=")
+                    Line("use a fact", f"{_facts(row, seen)}: {name.name} = {show(image)}", after=left, relation="=")
                 )
             elif after != before:
                 right = after
@@ -142,9 +175,10 @@ def _solved(equation: Poly, atom: Atom) -> Term:
 
 
 # ---------------------------------------------------------------- a certificate, replayed
-def _replayed(algebra: Algebra, laws: Mapping[str, Law], proof: Proved) -> Iterator[Line]:
+def _replayed(algebra: Algebra, laws: Mapping[str, Law], seen: _Seen) -> Iterator[Line]:
     """Suppose that the goal fails; each branch ends in something absurd."""
-    yield Line("finish", "suppose that the goal fails", after=negate(proof.goal))
+    proof = seen.proof
+    yield Line("begin", "suppose that the goal fails", after=negate(proof.goal))
     work: list[tuple[State, Certificate, int, Line | None]] = [
         (start(algebra, proof.facts, proof.goal), proof.certificate, 0, None)
     ]
@@ -154,7 +188,7 @@ def _replayed(algebra: Algebra, laws: Mapping[str, Law], proof: Proved) -> Itera
             yield heading
         match node:
             case Leaf():
-                yield from _added_up(state, node, depth, proof)
+                yield from _added_up(state, node, depth, seen)
             case Cut(atom, yes, no):
                 formula = _truth(atom)
                 for holds, rest in ((False, no), (True, yes)):
@@ -170,17 +204,17 @@ def _replayed(algebra: Algebra, laws: Mapping[str, Law], proof: Proved) -> Itera
                     work.append((other, branches[left], depth + 1, line))
             case Then(move, rest):
                 other = moved(state, move, laws)
-                yield _said(algebra, state, other, move, laws, depth, proof)
+                yield _said(state, other, move, laws, depth, seen)
                 work.append((other, rest, depth, None))
 
 
 def _said(
-    algebra: Algebra, state: State, other: State, move: Move, laws: Mapping[str, Law], depth: int, proof: Proved
+    state: State, other: State, move: Move, laws: Mapping[str, Law], depth: int, seen: _Seen
 ) -> Line:
     """One move in words."""
     match move:
         case Define(row, atom):
-            origin = _facts(state.rows[row], proof)
+            origin = _facts(state.rows[row], seen)
             return Line(
                 "use a fact",
                 f"put equals for equals, by {origin}",
@@ -188,7 +222,7 @@ def _said(
                 depth=depth,
             )
         case Shift(row, atom):
-            origin = _facts(state.rows[row], proof)
+            origin = _facts(state.rows[row], seen)
             known = related(state.rows[row].poly, ">=")
             words = f"by {origin}, {show(known)}: write {show(_name(atom))} as its lower bound and a natural number"
             return Line("use a fact", words, after=_equation(atom, other.images[atom]), depth=depth)
@@ -226,14 +260,14 @@ def _law_line(law: Law, arguments: Sequence[Term], depth: int) -> Line:
     return Line("bring in a law instance", f"{law.name}, for {with_}{source}", after=formula, depth=depth)
 
 
-def _added_up(state: State, leaf: Leaf, depth: int, proof: Proved) -> Iterator[Line]:
+def _added_up(state: State, leaf: Leaf, depth: int, seen: _Seen) -> Iterator[Line]:
     """Which rows, how often, add up to what cannot be."""
     total, strict = Poly({}), False
     for item in leaf.items:
         if isinstance(item, EquationItem):
             row = _row(state, item.equation)
             part = times(item.multiplier, row.poly)
-            words = f"({show(term_of(item.multiplier))}) times: {_origin(item.equation, row, proof)}"
+            words = f"({show(term_of(item.multiplier))}) times: {_origin(item.equation, row, seen)}"
         else:
             rows = [_row(state, ref) for ref in item.factors]
             part = Poly({(): item.coefficient})
@@ -242,7 +276,7 @@ def _added_up(state: State, leaf: Leaf, depth: int, proof: Proved) -> Iterator[L
             strict = strict or (bool(rows) and all(r.relation == ">" for r in rows))
             often = "" if item.coefficient == 1 else f"{show_number(item.coefficient)} times: "
             words = often + " multiplied by ".join(
-                _origin(ref, r, proof) for ref, r in zip(item.factors, rows, strict=True)
+                _origin(ref, r, seen) for ref, r in zip(item.factors, rows, strict=True)
             )
             if not rows:
                 words = f"the number {show_number(item.coefficient)}"
@@ -264,7 +298,7 @@ def _row(state: State, ref: int | FromAtom) -> Row:
     return atom_row(state.algebra, ref.atom, ref.which) if isinstance(ref, FromAtom) else state.rows[ref]
 
 
-def _origin(ref: int | FromAtom, row: Row, proof: Proved) -> str:
+def _origin(ref: int | FromAtom, row: Row, seen: _Seen) -> str:
     if isinstance(ref, FromAtom):
         shown = show(_name(ref.atom))
         if ref.atom.kind == "floor":
@@ -274,14 +308,14 @@ def _origin(ref: int | FromAtom, row: Row, proof: Proved) -> str:
         if ref.atom.idempotent:
             return "a condition counts 0 or 1"
         return f"{shown} is positive" if ref.atom.positive else f"{shown} is not negative"
-    return _facts(row, proof)
+    return _facts(row, seen)
 
 
-def _facts(row: Row, proof: Proved) -> str:
+def _facts(row: Row, seen: _Seen) -> str:
     """What a row rests on, by the numbers of the facts."""
     if not row.deps:
         return "what is supposed here"
-    numbers = [str(i + 1) for i in sorted(row.deps)]
+    numbers = [str(seen.numbers[i]) for i in sorted(row.deps)]
     return ("fact " if len(numbers) == 1 else "facts ") + ", ".join(numbers)
 
 
