@@ -16,10 +16,21 @@ from typing import TypeAlias
 from workbench.algebra.terms import Rational
 from workbench.errors import UllageError
 
-# A product of two expressions beyond this many terms helps no proof and would only eat time.
+# An expression of more terms than this helps no proof and would only eat time.
 TERM_LIMIT = 3000
-# Residues tried, at most, when a polynomial with fractional coefficients may still be integer-valued.
-RESIDUE_LIMIT = 400
+# Pairs of terms in one product: 10 ms.
+PAIR_LIMIT = 12_000
+# Bits of a coefficient: repeated squaring passes every bound soon.
+BIT_LIMIT = 20_000
+# Terms worked out, at most, when a polynomial with fractional coefficients may still be integer-valued: 1 ms.
+RESIDUE_LIMIT = 1200
+# Atoms inside atoms, and the length of an atom's key: rewriting goes down by recursion, and keys of atoms that share
+# parts double with every level.
+NESTING_LIMIT = 100
+KEY_LIMIT = 40_000
+# First signs of names that no formula can have: bound variables of sums, and names that the kernel makes.
+BOUND = "#"
+FRESH = "~"
 
 
 class TooLargeToNormalize(UllageError):
@@ -27,14 +38,18 @@ class TooLargeToNormalize(UllageError):
 
 
 class Atom:
-    """Made by `normal.Algebra` alone, which keeps one object for equal atoms.
+    """Made by `operators.Operators` alone, which keeps one object for equal atoms.
 
-    kind: var truth pow floor pos ind lg fact binom inv sum call. `parts` are the polynomials inside it, `data` the rest.
-    `deep` holds the atom and all atoms inside it, `loose` the bound variables of sums (`#1`, …) that occur in it
-    outside their sum. `positive` implies `nonneg`.
+    kind: var truth pow floor pos ind lg fact binom inv sum call. `parts` are the polynomials inside it, `data` the
+    rest. `positive` implies `nonneg`. Looked up at any depth, the atom itself included: `deep` are all atoms; `loose`
+    the bound variables of sums (`#1`, …) outside their sum; `newest` the highest number of a fresh name (`~1`, …), 0
+    without one; `inverted` the atoms with a negative exponent, powers of prime numbers apart, which are never 0.
     """
 
-    __slots__ = ("kind", "data", "parts", "key", "integer", "nonneg", "positive", "deep", "loose", "_hash")
+    __slots__ = (
+        "kind", "data", "parts", "key", "integer", "nonneg", "positive", "deep", "loose", "newest", "inverted", "depth",
+        "_hash",
+    )
 
     def __init__(
         self,
@@ -52,9 +67,14 @@ class Atom:
         self.nonneg = nonneg or positive
         self.positive = positive
         self.key = f"{kind}{data}" + "".join(f"<{p.key}>" for p in parts)
+        self.depth = 1 + max((p.depth for p in parts), default=0)
+        if self.depth > NESTING_LIMIT or len(self.key) > KEY_LIMIT:
+            raise TooLargeToNormalize("an expression nested too deeply")
         self._hash = hash(self.key)
         self.deep: frozenset[Atom] = frozenset((self,)).union(*(p.deep for p in parts))
         self.loose: frozenset[str] = _loose(self)
+        self.newest: int = _newest(self)
+        self.inverted: frozenset[Atom] = frozenset().union(*(p.inverted for p in parts))
 
     def __hash__(self) -> int:
         return self._hash
@@ -73,16 +93,27 @@ class Atom:
         """Its square is itself: it is 0 or 1."""
         return self.kind in ("ind", "truth")
 
+    @property
+    def is_power_of_prime(self) -> bool:
+        """p^x for a prime number p (or one too large to be split): never 0, and its inverse is p^(-x)."""
+        return self.kind == "pow" and bool(self.data)
+
 
 def _loose(atom: Atom) -> frozenset[str]:
     if atom.kind == "var":
         name = str(atom.data[0])
-        return frozenset((name,)) if name.startswith("#") else frozenset()
+        return frozenset((name,)) if name.startswith(BOUND) else frozenset()
     found: frozenset[str] = frozenset()
     for i, part in enumerate(atom.parts):
         inside = part.loose
         found |= inside - {str(atom.data[0])} if atom.kind == "sum" and i == 2 else inside
     return found
+
+
+def _newest(atom: Atom) -> int:
+    if atom.kind == "var" and str(atom.data[0]).startswith(FRESH):
+        return int(str(atom.data[0])[1:])
+    return max((p.newest for p in atom.parts), default=0)
 
 
 Monomial: TypeAlias = tuple[tuple[Atom, int], ...]
@@ -92,7 +123,7 @@ UNIT: Monomial = ()
 class Poly:
     """An immutable polynomial: monomial -> coefficient, none of them zero, integers as int."""
 
-    __slots__ = ("terms", "_hash", "_key", "_deep", "_integer")
+    __slots__ = ("terms", "_hash", "_key", "_deep", "_integer", "_inverted", "_atoms", "_loose")
 
     def __init__(self, terms: dict[Monomial, Rational]) -> None:
         self.terms = terms
@@ -100,6 +131,9 @@ class Poly:
         self._key: str | None = None
         self._deep: frozenset[Atom] | None = None
         self._integer: bool | None = None
+        self._inverted: frozenset[Atom] | None = None
+        self._atoms: frozenset[Atom] | None = None
+        self._loose: frozenset[str] | None = None
 
     def __hash__(self) -> int:
         if self._hash is None:
@@ -117,7 +151,8 @@ class Poly:
         """A text that is the same for equal polynomials."""
         if self._key is None:
             shown = sorted(
-                ("*".join(f"{a.key}^{e}" for a, e in mono), str(coefficient)) for mono, coefficient in self.terms.items()
+                ("*".join(f"{a.key}^{e}" for a, e in mono), str(coefficient))
+                for mono, coefficient in self.terms.items()
             )
             self._key = "+".join(f"{c}*{m}" for m, c in shown)
         return self._key
@@ -126,18 +161,40 @@ class Poly:
     def deep(self) -> frozenset[Atom]:
         """All atoms in it, at any depth."""
         if self._deep is None:
-            self._deep = frozenset().union(*(a.deep for mono in self.terms for a, _ in mono)) if self.terms else frozenset()
+            self._deep = frozenset().union(*(a.deep for a in self.atoms))
         return self._deep
 
     @property
     def loose(self) -> frozenset[str]:
         """Bound variables of sums that occur outside their sum."""
-        return frozenset().union(*(a.loose for a in self.atoms))
+        if self._loose is None:
+            self._loose = frozenset().union(*(a.loose for a in self.atoms))
+        return self._loose
 
     @property
-    def atoms(self) -> set[Atom]:
+    def newest(self) -> int:
+        """The highest number of a fresh name in it, at any depth; 0 without one."""
+        return max((a.newest for a in self.atoms), default=0)
+
+    @property
+    def inverted(self) -> frozenset[Atom]:
+        """Atoms with a negative exponent, at any depth, powers of prime numbers apart."""
+        if self._inverted is None:
+            here = {a for mono in self.terms for a, e in mono if e < 0 and not a.is_power_of_prime}
+            self._inverted = frozenset(here).union(*(a.inverted for a in self.atoms))
+        return self._inverted
+
+    @property
+    def depth(self) -> int:
+        """How deep its atoms are nested; 0 for a number."""
+        return max((a.depth for a in self.atoms), default=0)
+
+    @property
+    def atoms(self) -> frozenset[Atom]:
         """Atoms that it is a polynomial in."""
-        return {a for mono in self.terms for a, _ in mono}
+        if self._atoms is None:
+            self._atoms = frozenset(a for mono in self.terms for a, _ in mono)
+        return self._atoms
 
     @property
     def constant(self) -> Rational | None:
@@ -215,7 +272,7 @@ def plus(p: Poly, q: Poly) -> Poly:
             terms[mono] = tidy(total)
         else:
             terms.pop(mono, None)
-    return Poly(terms)
+    return _limited(terms)
 
 
 def scaled(p: Poly, factor: Rational) -> Poly:
@@ -260,19 +317,17 @@ def times(p: Poly, q: Poly) -> Poly:
     if not p.terms or not q.terms:
         return NOTHING
     if len(p.terms) == 1 and UNIT in p.terms:
-        return scaled(q, p.terms[UNIT])
+        return _written_out(scaled(q, p.terms[UNIT]))
     if len(q.terms) == 1 and UNIT in q.terms:
-        return scaled(p, q.terms[UNIT])
-    if len(p.terms) * len(q.terms) > TERM_LIMIT * 4:
+        return _written_out(scaled(p, q.terms[UNIT]))
+    if len(p.terms) * len(q.terms) > PAIR_LIMIT:
         raise TooLargeToNormalize("a product of two long sums")
     terms: dict[Monomial, Rational] = {}
     for m, c in p.terms.items():
         for n, d in q.terms.items():
             mono = times_monomials(m, n)
             terms[mono] = terms.get(mono, 0) + c * d
-    if len(terms) > TERM_LIMIT:
-        raise TooLargeToNormalize("a sum of too many terms")
-    return Poly({mono: tidy(c) for mono, c in terms.items() if c})
+    return _written_out(_limited({mono: tidy(c) for mono, c in terms.items() if c}))
 
 
 def total(parts: Iterable[Poly]) -> Poly:
@@ -280,7 +335,19 @@ def total(parts: Iterable[Poly]) -> Poly:
     for part in parts:
         for mono, c in part.terms.items():
             terms[mono] = terms.get(mono, 0) + c
-    return Poly({mono: tidy(c) for mono, c in terms.items() if c})
+    return _limited({mono: tidy(c) for mono, c in terms.items() if c})
+
+
+def _written_out(p: Poly) -> Poly:
+    if any(c.numerator.bit_length() + c.denominator.bit_length() > BIT_LIMIT for c in p.terms.values()):
+        raise TooLargeToNormalize("a number of too many digits")
+    return p
+
+
+def _limited(terms: dict[Monomial, Rational]) -> Poly:
+    if len(terms) > TERM_LIMIT:
+        raise TooLargeToNormalize("a sum of too many terms")
+    return Poly(terms)
 
 
 def denominator(p: Poly) -> int:
@@ -316,7 +383,7 @@ def _integer_valued(p: Poly) -> bool:
     if below == 1:
         return True
     atoms = sorted(p.atoms)
-    if below ** len(atoms) > RESIDUE_LIMIT:
+    if below ** len(atoms) * len(p.terms) > RESIDUE_LIMIT:
         return False
     place = {a: i for i, a in enumerate(atoms)}
     whole = [(int(c * below), [(place[a], e) for a, e in mono]) for mono, c in p.terms.items()]

@@ -204,7 +204,8 @@ def _replayed(algebra: Algebra, laws: Mapping[str, Law], seen: _Seen) -> Iterato
                     work.append((other, branches[left], depth + 1, line))
             case Then(move, rest):
                 other = moved(state, move, laws)
-                yield _said(state, other, move, laws, depth, seen)
+                if not isinstance(move, ThreeWays):  # the case distinction that follows says as much
+                    yield _said(state, other, move, laws, depth, seen)
                 work.append((other, rest, depth, None))
 
 
@@ -235,10 +236,6 @@ def _said(
         case OpenPositivePart(atom):
             words = "max: what is above 0 counts, what is below does not"
             return Line("one named simplification", words, after=_equation(atom, other.images[atom]), depth=depth)
-        case ThreeWays(atom):
-            poly = atom.parts[0]
-            words = f"{show(negate(_truth(atom)))}: one side is the greater"
-            return Line("one named simplification", words, before=related(poly, "="), depth=depth)
         case Instance(name, arguments):
             return _law_line(laws[name], [term_of(a) for a in arguments], depth)
         case SumLaw(kind, atom, _):

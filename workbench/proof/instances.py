@@ -105,7 +105,7 @@ def antidifference(state: State, atom: Atom) -> Poly | None:
     """F with F(i) - F(i - 1) = f(i), for f(i) = i^d * b^(c*i) with a number b: undetermined coefficients from the top down."""
     algebra = state.algebra
     body = atom.parts[2]
-    bound = algebra.variable_atom(str(atom.data[0]), "int")
+    bound = algebra.bound_atom(str(atom.data[0]))
     ((mono, _),) = body.terms.items()
     degree, ratio, grows = 0, Fraction(1), UNITY
     for factor, exponent in mono:

@@ -64,7 +64,7 @@ def moved(state: State, move: Move, laws: Mapping[str, Law]) -> State:
         case Rename(poly, atom):
             return state.rename(poly, atom)
         case Invert(atom):
-            return state.invertible(atom)
+            return state.invert(atom)
         case OpenPositivePart(atom):
             return state.open_positive_part(atom)
         case ThreeWays(atom):

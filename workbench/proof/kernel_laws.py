@@ -50,7 +50,7 @@ def sum_instance(algebra: Algebra, kind: str, atom: Atom, antidifference: Poly |
     low, high, body = atom.parts
     if not (low.is_integer and high.is_integer):
         raise NotProved("a sum needs integer bounds")
-    bound = algebra.variable_atom(str(atom.data[0]), "int")
+    bound = algebra.bound_atom(str(atom.data[0]))
     me, length = of_atom(atom), minus(high, low)
 
     def at(p: Poly, value: Poly) -> Poly:
@@ -82,6 +82,6 @@ def _instantiated(algebra: Algebra, p: Poly, bound: Atom, value: Poly) -> Poly:
     """p with the bound variable replaced; the value may contain that variable itself (a simultaneous replacement)."""
     if bound not in value.deep:
         return algebra.rewrite(p, {bound: value})
-    stand_in = algebra.variable_atom("#shifted", "int")
+    stand_in = algebra.bound_atom("#shifted")
     moved = algebra.rewrite(p, {bound: of_atom(stand_in)})
     return algebra.rewrite(moved, {stand_in: value})

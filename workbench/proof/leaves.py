@@ -9,7 +9,19 @@ from collections.abc import Iterable
 from fractions import Fraction
 from itertools import combinations_with_replacement
 
-from workbench.algebra.polynomial import NOTHING, UNIT, UNITY, Atom, Monomial, Poly, TooLargeToNormalize, of_atom, plus, scaled, times
+from workbench.algebra.polynomial import (
+    NOTHING,
+    UNIT,
+    UNITY,
+    Atom,
+    Monomial,
+    Poly,
+    TooLargeToNormalize,
+    of_atom,
+    plus,
+    scaled,
+    times,
+)
 from workbench.proof import linear
 from workbench.proof.kernel import EquationItem, FromAtom, Item, Leaf, Row, RowRef, State, atom_facts, atom_row
 
