@@ -206,24 +206,32 @@ def _power_bounds(atom: Atom) -> Iterator[Move]:
         yield Instance("sign of a power", (base, exponent))
         yield Instance("power at least one", (base, exponent))
         yield Instance("chord of a power", (base, exponent))
+    if atom.data == (2,) and exponent.nonneg:
+        yield Instance("square below power", (plus(exponent, constant(4)),))
     for k in (0, 1, 2, 3):
         yield Instance("tangent of a power", (base, exponent, constant(k)))
 
 
 def _symbolic_division(atom: Atom) -> Iterator[Move]:
-    """floor(x * 1/y): what is left of x."""
+    """floor(x/y): what is left of x."""
     inner = atom.parts[0]
-    for other in sorted(inner.atoms):
-        if other.kind == "inv":
-            divisor = other.parts[0]
-            dividend = Poly({})
-            for mono, c in inner.terms.items():
-                rest = tuple(f for f in mono if f[0] != other)
-                if (other, 1) in mono:
-                    dividend = plus(dividend, Poly({rest: c}))
-                else:
-                    dividend = plus(dividend, times(Poly({mono: c}), divisor))
-            yield Instance("division", (dividend, divisor))
+    divisors = [a.parts[0] for a in sorted(inner.atoms) if a.kind == "inv"]
+    divisors += [of_atom(a) for a in sorted({a for mono in inner.terms for a, e in mono if e == -1})]
+    for divisor in divisors:
+        dividend = _multiplied(inner, divisor)
+        yield Instance("quotient of less", (dividend, divisor))
+        yield Instance("quotient of once as much", (dividend, divisor))
+        yield Instance("division", (dividend, divisor))
+
+
+def _multiplied(p: Poly, divisor: Poly) -> Poly:
+    """p times the divisor, where 1/divisor stands in a term without that factor."""
+    result = Poly({})
+    for mono, c in p.terms.items():
+        rest = tuple(f for f in mono if not (f[0].kind == "inv" and f[0].parts[0] == divisor and f[1] == 1))
+        part = Poly({rest: c})
+        result = plus(result, part if rest != mono else times(part, divisor))
+    return result
 
 
 def _monotone(atoms: list[Atom]) -> Iterator[Move]:

@@ -14,7 +14,7 @@ from fractions import Fraction
 from workbench.algebra.normal import Algebra
 from workbench.algebra.polynomial import NOTHING, UNIT, UNITY, Atom, Poly, constant, minus, of_atom, plus, scaled
 from workbench.algebra.terms import Sort
-from workbench.proof.kernel_facts import NONE, Dependencies, Known, NotProved, Row, row_of
+from workbench.proof.kernel_facts import NONE, Dependencies, Known, NotProved, Row, atom_facts, atom_row, row_of
 from workbench.proof.kernel_laws import law_instance, sum_instance
 from workbench.proof.laws import Law
 
@@ -175,12 +175,15 @@ class State:
         return self._with_image(atom, scaled(rest, Fraction(-1) / slope), row.deps)
 
     def _with_image(self, atom: Atom, image: Poly, deps: Dependencies) -> State:
-        """The atom equals the image. What its sort said of its sign is kept as a row."""
+        """The atom equals the image. What the atom said of its value for free is kept as rows about the image."""
         other = self._copy()
         other.newest = max(other.newest, image.newest)
         changed = other._replace({atom: (image, deps)})
-        if atom.nonneg and not image.nonneg:
-            other._add_row(Row(image, ">" if atom.positive else ">=", deps))
+        for which in atom_facts(atom):
+            said = atom_row(self.algebra, atom, which)
+            poly, known = other.resolved(said.poly)
+            if not (poly.positive if said.relation == ">" else poly.nonneg):
+                other._add_row(Row(poly, said.relation, deps | known))
         other.know(changed)
         return other
 

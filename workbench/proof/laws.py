@@ -87,6 +87,11 @@ def _inverse_laws() -> list[Law]:
             _both(_le(_times(y, app("div", x, y)), x), _lt(x, _plus(_times(y, app("div", x, y)), y))),
             CONCRETE,
         ),
+        Law("quotient of less", (x, y), _both(_le(ZERO, x), _lt(x, y)), _eq(app("div", x, y), ZERO), CONCRETE),
+        Law(
+            "quotient of once as much", (x, y), _both(_lt(ZERO, y), _both(_le(y, x), _lt(x, _times(TWO, y)))),
+            _eq(app("div", x, y), ONE), CONCRETE,
+        ),
     ]
 
 

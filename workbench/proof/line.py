@@ -75,6 +75,14 @@ class Line:
         self.state = moved(self.state, move, self.effort.laws)
         self.wrappers.append(lambda rest: Then(move, rest))
 
+    def attempt(self, move: Move) -> bool:
+        """The move, where it applies; whether it did."""
+        try:
+            self.move(move)
+        except (NotProved, TooLargeToNormalize):
+            return False
+        return True
+
     def leaf(self) -> Leaf | None:
         self.effort.tick()
         return linear_leaf(self.state, self.effort.deadline)

@@ -68,6 +68,10 @@ class Hints:
     middle: frozenset[str] = frozenset()
 
 
+# Names asked whether they are 0 before one of them is split.
+DECIDED_LIMIT = 4
+
+
 class Search:
     """Proves obligations of one sheet: its algebra, its laws and functions, its limits."""
 
@@ -247,12 +251,14 @@ class Search:
                     line.proves(unknown, False)
             if len(y.terms) > 1:
                 candidates = [a for a in sorted(y.atoms) if y.coefficient(a) in (1, -1) and a.kind in ("var", "pow")]
-                if not candidates or not line.use(Rename(y, candidates[-1])):
+                if not candidates or not line.attempt(Rename(y, candidates[-1])):
                     continue
                 y = self.algebra.rewrite(y, line.state.images)
             single = next(iter(y.atoms), None)
             if single is not None and y == of_atom(single):
-                line.use(Invert(single))
+                for unknown in self.algebra.rewrite(self.algebra.equal(y), line.state.images).atoms:
+                    line.proves(unknown, False)
+                line.attempt(Invert(single))
         tidy(line)
         return line.leaf()
 
@@ -280,6 +286,9 @@ class Search:
         """A natural name of the goal is 0, or at least 1; and so on, a few times."""
         if depth + 2 > DEPTH_LIMIT:
             return None
+        for atom in list(islice(zeros(line), DECIDED_LIMIT)):
+            if line.decide(atom):
+                return self._solve(line.branch(), depth + 1)
         for atom in islice(zeros(line), 1):
             return self._split(line, atom, lambda b: self._solve(b, depth + 2))
         return None

@@ -65,14 +65,12 @@ def _divisor(atom: Atom) -> int | None:
 
 
 def zeros(line: Line) -> Iterable[Atom]:
-    """Equations x = 0 for the naturals of the goal."""
-    names: dict[Atom, None] = {}
-    for row in line.state.rows.values():
-        if not row.deps:
-            for a in sorted(row.poly.deep):
-                if a.kind == "var" and a.nonneg and a.integer and not a.loose:
-                    names[a] = None
-    for name in names:
-        for atom in line.effort.algebra.equal(of_atom(name)).atoms:
-            if atom.kind == "ind" and atom not in line.state.images:
-                yield atom
+    """Equations x = 0 for naturals: those inside other atoms first, then those of the goal, then all."""
+    rows = sorted(line.state.rows.values(), key=lambda r: bool(r.deps))
+    inside = (a for r in rows for b in sorted(r.poly.atoms) if b.kind != "var" for a in sorted(b.deep))
+    outside = (a for r in rows for a in sorted(r.poly.atoms))
+    for name in dict.fromkeys((*inside, *outside)):
+        if name.kind == "var" and name.nonneg and name.integer and not name.loose:
+            for atom in line.effort.algebra.equal(of_atom(name)).atoms:
+                if atom.kind == "ind" and atom not in line.state.images:
+                    yield atom

@@ -64,6 +64,8 @@ def _shift(line: Line) -> bool:
         for atom in row.poly.atoms:
             if atom.kind != "var" or not atom.integer or row.poly.coefficient(atom) != 1:
                 continue
+            if atom in line.state.inverted:
+                continue  # it was given this name so that its powers cancel
             bound = minus(of_atom(atom), row.poly)
             if not bound.is_integer or (atom.nonneg and not (bound.terms and bound.nonneg)):
                 continue
