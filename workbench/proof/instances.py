@@ -185,6 +185,9 @@ def bounding(atoms: Iterable[Atom]) -> Iterator[Move]:
             case "lg":
                 yield Instance("definition of lg", atom.parts)
                 yield Instance("lg below its argument", atom.parts)
+                for k in (1, 2, 3):
+                    yield Instance("lg grows", (constant(2**k), atom.parts[0]))
+                    yield Instance("lg grows", (atom.parts[0], constant(2**k - 1)))
             case "fact":
                 yield Instance("factorial above its argument", atom.parts)
             case "binom":
