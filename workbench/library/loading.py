@@ -114,6 +114,8 @@ class _Library:
         self.laws = {law.name: len(law.parameters) for law in built_in_laws()}
 
     def load(self, path: str, text: str | None) -> Loaded:
+        if "\0" in path:
+            return Loaded(path, "", None, (Problem(path, TOP, "no path of a file holds the character U+0000"),), {})
         top = os.path.realpath(path)
         self.files[top] = self._file(top, path, text)
         self._read_used(top)

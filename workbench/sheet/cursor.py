@@ -209,7 +209,7 @@ def line_of(text: str, span: Span) -> str:
 def described(token: Token) -> str:
     """How a message calls a token."""
     if token.kind == END_OF_TEXT:
-        return "the end of the sheet"
+        return "the end of the text"
     if token.kind == NEWLINE:
         return "';'" if token.text == ";" else "the end of the line"
     if token.kind == STRING:

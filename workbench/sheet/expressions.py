@@ -38,7 +38,6 @@ from workbench.sheet.words import (
     LONGEST_CHAIN,
     MINUS,
     NOT,
-    RESERVED,
     RIGHT,
     SUFFIXES,
     TALLEST,
@@ -88,9 +87,13 @@ class ExpressionReader(Cursor):
         """An expression without comparison, not, and, or, implies, if."""
         return self._parse(ADD).node
 
-    def expressions(self) -> tuple[Expr, ...]:
-        """"(" exprs ")" with the bracket not yet taken."""
-        return tuple(p.node for p in self._arguments())
+    def application(self, what: str) -> Application:
+        """NAME "(" exprs ")"; `what` says of what it is the name."""
+        if self.token.kind != NAME:
+            self.expect_name(what)  # which says what is wrong
+        node = self._application().node
+        assert isinstance(node, Application)
+        return node
 
     # -------------------------------------------------------------- operators
     def _parse(self, lowest: int) -> _Part:
@@ -201,7 +204,7 @@ class ExpressionReader(Cursor):
         token = self.token
         kind = token.kind
         if kind == NAME:
-            return self._named()
+            return self._application() if self.next_kind == "(" else self._named()
         if kind == NUMBER:
             return self._leaf(token, self._number())
         if kind == "(":
@@ -228,8 +231,8 @@ class ExpressionReader(Cursor):
         if token.kind in ("if", "not") or token.kind in ASPECTS:
             return Mistake(token, f"'{token.kind}' cannot stand here", "put the whole of it in brackets")
         what = "a value" if lowest > COMPARE else "a value or formula"
-        if token.kind in RESERVED and token.kind not in LEVELS and self.previous.kind in LEVELS:
-            return self.expected(f"{what} after '{self.previous.text}'")
+        if self.previous.kind in LEVELS:
+            what += f" after '{self.previous.text}'"
         mend = None
         if token.kind == ".":
             mend = "a number begins with a digit: 0.5"
@@ -256,10 +259,7 @@ class ExpressionReader(Cursor):
         return self.expected("')'")
 
     def _named(self) -> _Part:
-        token = self.token
-        if self.next_kind == "(":
-            return self._application()
-        self.advance()
+        token = self.advance()
         name = token.text
         if self.token.kind == "." and self.token.start == token.end:
             self.advance()
@@ -276,29 +276,25 @@ class ExpressionReader(Cursor):
                           "put an operator between them, such as *; a name begins with a letter")  # fmt: skip
         return Number(number_value(token), token.text, self.since(token))
 
-    def _arguments(self) -> list[_Part]:
-        first = self.expect("(")
-        self.enter(first)
+    def _application(self) -> _Part:
+        first = self.advance()
+        if self.token.kind != "(":
+            mend = f"its arguments stand in brackets: {first.text[:20]}(…)"
+            raise self.expected(f"'(' after {quoted(first.text)}", mend)
+        bracket = self.advance()
+        self.enter(bracket)
         found: list[_Part] = []
         while self.token.kind != ")":
             if found:
                 if self.token.kind != ",":
-                    raise self._unclosed(first)
+                    raise self._unclosed(bracket)
                 self.advance()
             found.append(self._parse(IMPLIES))
             if len(found) > LONGEST_CHAIN:
-                raise Mistake(first, f"more than {LONGEST_CHAIN:,} arguments")
+                raise Mistake(bracket, f"more than {LONGEST_CHAIN:,} arguments")
         self.advance()
         self.leave()
-        return found
-
-    def _application(self) -> _Part:
-        first = self.advance()
-        if self.token.kind != "(":
-            raise self.expected(f"'(' after '{first.text}'", f"its arguments stand in brackets: {first.text}(…)")
-        arguments = self._arguments()
-        node = Application(first.text, tuple(p.node for p in arguments), self.since(first))
-        return self._grown(node, first, arguments)
+        return self._grown(Application(first.text, tuple(p.node for p in found), self.since(first)), first, found)
 
     def _summation(self) -> _Part:
         """"sum" "(" expr "for" NAME "from" expr "to" expr ")" """

@@ -327,8 +327,7 @@ class ItemReader(StatementReader):
         first = self.advance()
         title = self.string("the title of a budget")
         self.expect(":")
-        routine = self.expect_name("the name of a routine").text
-        arguments = self.expressions()
+        call = self.application("the name of a routine")
         if self.token.kind not in ("spent", "peak", "mean"):
             raise self.expected("'spent', 'peak' or 'mean'")
         aspect: Any = self.advance().kind
@@ -336,7 +335,7 @@ class ItemReader(StatementReader):
         self.expect("<=")
         limit = self.formula()
         bindings = self._bindings(self.sum) if self.take("given") else ()
-        return Budget(title, routine, arguments, aspect, resource, limit, bindings, self.since(first))
+        return Budget(title, call.name, call.arguments, aspect, resource, limit, bindings, self.since(first))
 
     def _pool(self) -> Item:
         """"pool" STRING ":" INT "of" NAME(exprs) "within" expr NAME [ "overflow" "below" NUMBER ] [ "given" … ]"""
@@ -345,8 +344,7 @@ class ItemReader(StatementReader):
         self.expect(":")
         count = self.whole_number("how many")
         self.expect_word("of")
-        routine = self.expect_name("the name of a routine").text
-        arguments = self.expressions()
+        call = self.application("the name of a routine")
         self.expect_word("within")
         room = self.formula()
         gauge = self.resource_name("hold")
@@ -357,4 +355,4 @@ class ItemReader(StatementReader):
                 raise self.expected("a probability", "such as 1e-6")
             overflow = self._number().value
         bindings = self._bindings(self.sum) if self.take("given") else ()
-        return Pool(title, count, routine, arguments, room, gauge, overflow, bindings, self.since(first))
+        return Pool(title, count, call.name, call.arguments, room, gauge, overflow, bindings, self.since(first))

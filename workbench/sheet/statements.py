@@ -66,7 +66,8 @@ class StatementReader(ExpressionReader):
                 break
             start = self.at
             try:
-                statement = self._statement()
+                # Straight from the table: every call between block and block makes the stack of a deep text deeper.
+                statement = self._statements.get(self.token.kind, self._nameless)()
                 self.end_of_line()
                 found.append(statement)
             except Mistake as mistake:
@@ -77,10 +78,8 @@ class StatementReader(ExpressionReader):
         self.leave()
         return tuple(found)
 
-    def _statement(self) -> Statement:
-        read = self._statements.get(self.token.kind)
-        if read is not None:
-            return read()
+    def _nameless(self) -> Statement:
+        """A statement that begins with no word of the language."""
         if self.token.kind == NAME:
             if self.next_kind == "(":
                 return self._call()
@@ -173,8 +172,8 @@ class StatementReader(ExpressionReader):
         return Skip(self.since(self.advance()))
 
     def _call(self) -> Statement:
-        first = self.advance()
-        return CallStatement(first.text, self.expressions(), self.since(first))
+        call = self.application("the name of a routine")
+        return CallStatement(call.name, call.arguments, call.span)
 
     def _assign(self) -> Statement:
         """target ":=" value"""
@@ -205,11 +204,14 @@ class StatementReader(ExpressionReader):
         return Note(name, self.formula(), self.since(first))
 
     def _if(self) -> Statement:
-        first = self.advance()
-        branches = [self._branch(first)]
+        first = self.token
+        branches: list[tuple[Expr, Block]] = []
         otherwise: Block | None = None
-        while self.token.kind == "elif":
-            branches.append(self._branch(self.advance()))
+        while not branches or self.token.kind == "elif":
+            self.advance()
+            condition = self.attempt(self.formula, "then")
+            self.open_block("then", first)
+            branches.append((condition, self.block(first)))
         if self.token.kind == "else":
             otherwise = self.block(self.advance())
             if self.token.kind in ("else", "elif"):
@@ -217,11 +219,6 @@ class StatementReader(ExpressionReader):
                 self._drop_branches(first)
         self.close(first)
         return If(tuple(branches), otherwise, self.since(first))
-
-    def _branch(self, opener: Token) -> tuple[Expr, Block]:
-        condition = self.attempt(self.formula, "then")
-        self.open_block("then", opener)
-        return condition, self.block(opener)
 
     def _either(self) -> Statement:
         first = self.advance()
@@ -426,8 +423,8 @@ class StatementReader(ExpressionReader):
         if first.kind == "cases":
             hint: CasesHint | UsingHint = CasesHint(self.formula(), self.since(first))
         else:
-            law = self.expect_name("the name of a law or function").text
-            hint = UsingHint(law, self.expressions(), self.since(first))
+            used = self.application("the name of a law or function")
+            hint = UsingHint(used.name, used.arguments, self.since(first))
         self._header_line()
         return hint
 
