@@ -22,7 +22,10 @@ DEGREE_LIMIT = 8
 
 
 def deep_atoms(state: State) -> list[Atom]:
-    """All atoms of rows and undecided facts, at any depth, that are no part of a sum's summand; in order of first sight."""
+    """All atoms of rows and undecided facts, at any depth, that are no part of a sum's summand; in order of first sight.
+
+    Atoms that were replaced by what they equal come last: what the laws say of them still holds.
+    """
     found: dict[Atom, None] = {}
     stack: list[Poly] = [r.poly for r in state.rows.values()] + [k.poly for k in state.pending]
     stack.reverse()
@@ -32,7 +35,12 @@ def deep_atoms(state: State) -> list[Atom]:
                 continue
             found[atom] = None
             stack.extend(atom.parts)
+    found.update((a, None) for a in state.images if a.kind in _LAWFUL and not a.loose)
     return list(found)
+
+
+# Kinds of atoms that laws speak of.
+_LAWFUL = frozenset(("pow", "lg", "fact", "binom", "floor", "call", "sum"))
 
 
 # ---------------------------------------------------------------- stage 1: equations that simplify
