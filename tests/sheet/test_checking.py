@@ -39,6 +39,8 @@ GOOD = [
     "function g(k: nat): nat = if k = 0 then 0 else g(k - 1)\n",
     routine("hold frame stack do\nskip\nend", " given frame > 0\n", "(n: nat) with frame = 2*n")
     + "constant frame: nat = 3 where frame > 2\n",
+    TARIFF.replace("end", "on call: hold frame stack\nend")
+    + "routine g() with frame = 1\nis\nend\nroutine h()\nis\nend",
     TARIFF.replace("end", "on declare: hold 4*size stack\non call: hold frame stack\nend") + "constant size4: nat\n",
     "state a: nat where a <= b\nstate b: nat\nfunction f(a: nat): nat = sum(b for b from 1 to a)\n",
     "constant a: nat = b + 1\nconstant b: nat\nlaw l(n: int) given n > 0: 2*n > n by induction on n from 1\n",
@@ -154,6 +156,8 @@ BAD = [
      + "routine g()\nis\n g()\nend", [6], "is 'frame' meant?"),
     (TARIFF.replace("end", "on call: hold frame stack\nend") + "routine g() with frame = 1\nis\n h()\nend\n"
      "routine h()\nis\nend", [5], "a call of 'h' has the price 'frame'"),
+    (TARIFF.replace("end", "on call: hold frame stack\nend") + "routine g() with frmae = 1\nis\nend", [5],
+     "is 'frmae' meant?"),
     (routine() + 'budget "x": g(1) spent time <= 3', [10], "there is no routine 'g'"),
     (routine() + 'budget "x": f(1) spent time <= 3', [10], "takes 2 arguments"),
     (routine() + 'budget "x": f(n, b) spent stack <= 3', [10], "needs a counter"),

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import inspect
 import re
+import sys
 import time
 from pathlib import Path
 
@@ -12,14 +14,15 @@ from hypothesis import strategies as st
 
 from workbench.library.loading import load_text
 from workbench.printing.messages import format_problems
-from workbench.sheet.reader import decode_sheet
+from workbench.sheet.reader import decode_sheet, read_sheet
 from workbench.sheet.words import LARGEST_SHEET
+from workbench.sheet.writer import write_sheet
 
 ACCEPTANCE = Path(__file__).resolve().parents[1] / "acceptance"
 TEXTS = [t for p in sorted(ACCEPTANCE.glob("*/*.ullage")) if (t := decode_sheet(p.read_bytes(), "")[0])]
 PIECES = sorted({piece for text in TEXTS for piece in re.findall(r"\w+|\s+|[^\w\s]", text) if len(piece) < 30})
 CONTROL = re.compile("[\x00-\x09\x0b-\x1f\x7f-\x9f\u061c\u200e\u200f\u2028-\u202e\u2066-\u2069]")
-QUICK = settings(max_examples=100, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+QUICK = settings(max_examples=60, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 SECONDS = 2  # for an ordinary sheet; what is a mebibyte of one-character tokens may take TOKENS_SECONDS
 TOKENS_SECONDS = 10  # about 5 µs for each of a million tokens, on a slow machine under load
 
@@ -148,3 +151,24 @@ def test_nesting_without_bounds_gets_one_message(deep: str, said: str) -> None:
 def test_long_chains_of_branches_are_flat() -> None:
     branches = "".join(f"elif n = {i} then skip\n" for i in range(5_000))
     assert survive(HEAD + "if n = 0 then skip\n" + branches + "end\nend\n") == ""
+
+
+DEEPEST = {  # as deep as the language allows, each in the way that needs most of Python's stack
+    "brackets": "n := " + "1+(" * 199 + "n" + ")" * 199,
+    "calls of functions": "n := " + "g(" * 199 + "n" + ")" * 199,
+    "conditions": "n := " + "if b then 1 else " * 199 + "n",
+    "loops": "".join(f"for i{k} from 1 to n do\n" for k in range(199)) + "n := 1\n" + "end\n" * 199,
+}
+
+
+@pytest.mark.parametrize("body", DEEPEST.values(), ids=DEEPEST.keys())
+def test_the_deepest_text_needs_two_thirds_of_the_stack(body: str) -> None:
+    text = f"function g(n: nat): nat = n\n{HEAD.replace('n: nat', 'n: nat, b: bool')}{body}\nend\n"
+    usual = sys.getrecursionlimit()
+    try:
+        sys.setrecursionlimit(len(inspect.stack(0)) + 667)  # of the usual thousand: the rest is the caller's
+        sheet = load_text("/nowhere/deep.ullage", text).sheet
+        assert sheet is not None
+        assert read_sheet(write_sheet(sheet), "").problems == ()
+    finally:
+        sys.setrecursionlimit(usual)

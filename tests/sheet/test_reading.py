@@ -232,6 +232,8 @@ SHEETS = [
     ("tariff t\n counter time\nroutine f()\nis\nend", [1], "never closed"),
     ("tariff t\n counter time\nedn\nroutine f()\nis\nend", [3], "is 'end' meant?"),
     ("routine f()\n  skip\nend", [2], "'is'"),
+    ("routine f()\n  claim a: 1 = 1\n\nconstant c: nat\n", [4], "'is'"),
+    ("routine f()\n", [2], "'is'"),
     ("routine f(n nat)\nis\n f(n, n)\nend", [1], "expected ':'"),
     ("routine f(n: nat)\n clami a: n = n\nis\nend", [2], "is 'claim' meant?"),
     ("routine f(n: nat)\n a: n = n\nis\nend", [2], "claim a: …"),

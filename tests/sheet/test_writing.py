@@ -15,7 +15,7 @@ from workbench.sheet.writer import replace, write_expr, write_sheet
 
 ACCEPTANCE = Path(__file__).resolve().parents[1] / "acceptance"
 LEGAL = sorted([*ACCEPTANCE.glob("sheets/*.ullage"), *ACCEPTANCE.glob("broken/*.ullage")])
-QUICK = settings(max_examples=150, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+QUICK = settings(max_examples=100, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 
 
 @QUICK
@@ -24,7 +24,7 @@ def test_every_formula_reads_back_to_an_equal_tree(expr: tree.Expr) -> None:
     assert read_formula(write_expr(expr)) == expr
 
 
-@settings(QUICK, max_examples=100)
+@settings(QUICK, max_examples=60)
 @given(SHEETS)
 def test_every_sheet_reads_back_to_an_equal_tree(sheet: tree.Sheet) -> None:
     reading = read_sheet(write_sheet(sheet), "random.ullage")

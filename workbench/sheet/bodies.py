@@ -127,7 +127,8 @@ class BodyChecking(Typing):
                     self._block(block)
             case tree.While():
                 self.require(statement.condition, "formula", TEST)
-                self._loop(statement.header, statement.body)
+                self._loop_header(statement.header)
+                self._block(statement.body)
             case tree.For():
                 self._for(statement)
             case tree.Var():
@@ -149,13 +150,13 @@ class BodyChecking(Typing):
         mark = self.mark()
         if statement.variable:
             self.declare(Symbol("loop variable", statement.variable, "int", statement.span))
-        self._loop(statement.header, statement.body)
+        self._loop_header(statement.header)
+        self._block(statement.body)
         self.forget(mark)
 
-    def _loop(self, header: tree.Header, body: tree.Block) -> None:
+    def _loop_header(self, header: tree.Header) -> None:
         self._header(header, INNER_GIVEN, INNER_MEASURE)
         self._claims(header, INNER_CLAIM)
-        self._block(body)
 
     def _stage(self, statement: tree.Stage) -> None:
         """Its block is no scope of its own; what it declares has an end value only, as far as its claims go."""

@@ -159,7 +159,10 @@ class _SheetChecker(BodyChecking):
         self.forget(mark)
 
     def _charges_of_calls(self) -> None:
-        """Names in the price of a call: bindings of every routine that is called, or constants."""
+        """Names in the price of a call: bindings of every routine that is called, or constants.
+
+        Where nothing is called it is enough that some routine has the name; a sheet of prices alone leaves it open.
+        """
         calls: dict[str, Span | None] = {}
         for sheet in (self.sheet, *self.used.values()):
             for callee, span in calls_in(sheet):
@@ -174,12 +177,15 @@ class _SheetChecker(BodyChecking):
         symbol = self.globals.get(name)
         if not name or (symbol is not None and symbol.kind == "constant"):
             return
+        routines = [s for s in self.globals.values() if isinstance(s.item, tree.Routine)]
+        if not calls and routines and charge is not None:
+            calls = {r.name: None for r in routines[:1] if not any(name in _bound(s.item) for s in routines)}
         for callee, call in calls.items():
             routine = self.globals.get(callee)
             span = charge or call
             if routine is None or not isinstance(routine.item, tree.Routine) or span is None:
                 continue
-            bound = [b.name for b in routine.item.bindings]
+            bound = _bound(routine.item)
             if name not in bound and not self.is_doubtful(name) and not self.is_doubtful(callee):
                 self._charge_names_nothing(name, callee, bound, span)
                 return
@@ -253,3 +259,6 @@ class _SheetChecker(BodyChecking):
         self.require(limit, "number", Context("a limit", VALUES))
         self.forget(mark)
 
+
+def _bound(routine: object) -> list[str]:
+    return [b.name for b in routine.bindings] if isinstance(routine, tree.Routine) else []

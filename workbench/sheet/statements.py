@@ -166,6 +166,8 @@ class StatementReader(ExpressionReader):
         self.skip_newlines()
         if not self.take(word) and not excused:
             self.record(missing)
+            if self.token.kind == END_OF_TEXT or self.at_item():
+                self._missing_end_at = self.at  # the whole block is missing: one mistake
 
     # -------------------------------------------------------------- statements
     def _skip(self) -> Statement:

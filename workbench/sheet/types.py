@@ -267,38 +267,40 @@ class Typing(Scope):
 
     # -------------------------------------------------------------- applications
     def _application(self, expr: tree.Application, context: Context) -> Typed:
-        name = expr.name
-        if name in ARITIES:
-            return self._built_in(expr, context)
-        symbol = self.find(name)
+        found: list[Typed] = []
+        for argument in expr.arguments:  # in a loop of this very function: a deep tree should make no deep stack
+            found.append(self.typed(argument, context))
+        if expr.name in ARITIES:
+            return self._built_in(expr, found)
+        symbol = self.find(expr.name)
         if symbol is not None and symbol.kind == "function" and isinstance(symbol.item, tree.Function):
-            self.check_arguments(name, expr.span, symbol.item.parameters, expr.arguments, context)
+            self._fit(expr.name, expr.span, symbol.item.parameters, expr.arguments, found)
             return Typed(class_of(symbol.sort))
-        for argument in expr.arguments:
-            self.typed(argument, context)
         if symbol is None:
-            self.unknown(expr.span, name, "function", ("function", "routine") if context.statement else ("function",))
+            kinds = ("function", "routine") if context.statement else ("function",)
+            self.unknown(expr.span, expr.name, "function", kinds)
         elif symbol.kind == "routine":
-            mend = f"assign it first: x := {name[:20]}(…)" if context.statement else None
-            self.complain(expr.span, f"the routine {quoted(name)} is called inside an expression", mend)
+            mend = f"assign it first: x := {expr.name[:20]}(…)" if context.statement else None
+            self.complain(expr.span, f"the routine {quoted(expr.name)} is called inside an expression", mend)
         else:
-            self.complain(expr.span, f"{quoted(name)} is a {symbol.kind}, no function")
+            self.complain(expr.span, f"{quoted(expr.name)} is a {symbol.kind}, no function")
         return UNKNOWN
 
     def check_arguments(self, name: str, span: Span, parameters: tuple[tree.Parameter, ...],
                         arguments: tuple[Expr, ...], context: Context) -> None:  # fmt: skip
-        """Number and types of what is passed to a function, law or routine."""
-        for parameter, argument in zip(parameters, arguments, strict=False):
-            self.require(argument, class_of(parameter.sort), context)
-        for argument in arguments[len(parameters) :]:
-            self.typed(argument, context)
+        """Number and types of what is passed to a law or routine."""
+        self._fit(name, span, parameters, arguments, [self.typed(a, context) for a in arguments])
+
+    def _fit(self, name: str, span: Span, parameters: tuple[tree.Parameter, ...],
+             arguments: tuple[Expr, ...], found: list[Typed]) -> None:  # fmt: skip
+        for parameter, argument, typed in zip(parameters, arguments, found, strict=False):
+            self._agree(argument, typed.kind, class_of(parameter.sort))
         if len(parameters) != len(arguments) and not self.is_doubtful(name):
             listed = ", ".join(f"{p.name}: {p.sort}" for p in parameters[:8])
             self.complain(span, f"{quoted(name)} takes {counted(len(parameters))}, found {len(arguments)}",
                           f"its parameters are ({listed})" if parameters else "write () after it")  # fmt: skip
 
-    def _built_in(self, expr: tree.Application, context: Context) -> Typed:
-        found = [self.typed(argument, context) for argument in expr.arguments]
+    def _built_in(self, expr: tree.Application, found: list[Typed]) -> Typed:
         for argument, typed in zip(expr.arguments, found, strict=True):
             self._agree(argument, typed.kind, "number")
         least, most = ARITIES[expr.name]

@@ -59,10 +59,11 @@ def _write(expr: Expr, least: int, last: bool) -> str:
         case tree.Comparison(operands, ops):
             parts = [_write(operands[0], COMPARE + 1, False)]
             for at, op in enumerate(ops, 1):
-                parts += [f" {op} ", _right(operands[at], COMPARE + 1, last and at == len(ops))]
+                least = _right_least(operands[at], COMPARE + 1)
+                parts += [f" {op} ", _write(operands[at], least, last and at == len(ops))]
             return "".join(parts)
         case tree.Short(aspect, resource, op, bound):
-            return f"{aspect} {resource} {op} {_right(bound, COMPARE + 1, last)}"
+            return f"{aspect} {resource} {op} {_write(bound, _right_least(bound, COMPARE + 1), last)}"
         case tree.Conditional(condition, then, otherwise):
             return f"if {write_expr(condition)} then {write_expr(then)} else {write_expr(otherwise)}"
         case tree.Application(name, arguments):
@@ -73,9 +74,8 @@ def _write(expr: Expr, least: int, last: bool) -> str:
 
 def _write_chain(expr: tree.Binary, least: int, last: bool) -> str:
     """Binary operators, down their left edge in a loop: sums have thousands of terms."""
-    level = LEVELS[expr.op]
-    if level < least:
-        return f"({_write_chain(expr, IMPLIES, True)})"
+    bracketed = LEVELS[expr.op] < least
+    last = last or bracketed
     spine = [expr]
     while isinstance(left := spine[-1].left, tree.Binary) and LEVELS[left.op] >= _left_least(spine[-1]):
         spine.append(left)
@@ -83,8 +83,9 @@ def _write_chain(expr: tree.Binary, least: int, last: bool) -> str:
     for node in reversed(spine):
         level = LEVELS[node.op]
         parts.append(node.op if node.op in TIGHT else f" {node.op} ")
-        parts.append(_right(node.right, level if level in RIGHT else level + 1, last and node is expr))
-    return "".join(parts)
+        tight = level if level in RIGHT else level + 1
+        parts.append(_write(node.right, _right_least(node.right, tight), last and node is expr))
+    return f"({''.join(parts)})" if bracketed else "".join(parts)
 
 
 def _left_least(node: tree.Binary) -> int:
@@ -92,10 +93,9 @@ def _left_least(node: tree.Binary) -> int:
     return level + 1 if level in RIGHT else level
 
 
-def _right(expr: Expr, least: int, last: bool) -> str:
-    """What stands after an operator: there a minus needs no brackets."""
-    minus = isinstance(expr, tree.Unary) and expr.op == "-"
-    return _write(expr, MINUS if minus else least, last)
+def _right_least(expr: Expr, least: int) -> int:
+    """How tightly what stands after an operator must bind: a minus needs no brackets there."""
+    return MINUS if isinstance(expr, tree.Unary) and expr.op == "-" else least
 
 
 def _level(expr: Expr) -> int:
