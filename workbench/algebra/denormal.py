@@ -5,7 +5,23 @@ from __future__ import annotations
 from fractions import Fraction
 
 from workbench.algebra.polynomial import UNIT, Atom, Monomial, Poly, denominator, minus, scaled
-from workbench.algebra.terms import ONE, ZERO, Rational, Sort, Term, add, app, call, mul, num, sub, summation, var
+from workbench.algebra.terms import (
+    ONE,
+    ZERO,
+    Rational,
+    Sort,
+    Term,
+    add,
+    app,
+    call,
+    mul,
+    names,
+    num,
+    sub,
+    substitute,
+    summation,
+    var,
+)
 
 
 def term_of(poly: Poly) -> Term:
@@ -77,11 +93,18 @@ def atom_term(atom: Atom) -> Term:
         case "floor" | "lg" | "fact" | "binom":
             return app(atom.kind, *map(term_of, parts))
         case "sum":
-            bound = var(str(atom.data[0]), "int")
-            return summation(bound, *map(term_of, parts))
+            return _sum_term(atom)
         case "call":
             return call(str(atom.data[1]), _sort(atom.data[2]), tuple(map(term_of, parts)))
     raise ValueError(f"no term for {atom.kind}")
+
+
+def _sum_term(atom: Atom) -> Term:
+    """The bound variable gets a name that a sheet can write and that nothing in the sum has."""
+    low, high, body = map(term_of, atom.parts)
+    taken = names(low) | names(high) | names(body)
+    bound = var(next(n for n in ("j", *(f"j{i}" for i in range(1, 10_000))) if n not in taken), "int")
+    return summation(bound, low, high, substitute(body, {var(str(atom.data[0]), "int"): bound}))
 
 
 def _sort(data: str | int) -> Sort:
