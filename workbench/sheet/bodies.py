@@ -23,7 +23,8 @@ INNER_CLAIM = Context("a claim", IN_BODY, result=True, primes=True)
 
 
 class BodyChecking(Typing):
-    laws: Mapping[str, int] = {}  # built-in ones: name to number of parameters
+    laws: Mapping[str, int]  # built-in ones: name to number of parameters
+    _stages: dict[str, Span]  # of the routine that is being checked: name to first place
 
     def check_routine(self, routine: tree.Routine) -> None:
         self.routine = routine
@@ -33,7 +34,7 @@ class BodyChecking(Typing):
         self._bindings(routine)
         self._header(routine.header, GIVEN, MEASURE)
         self._claims(routine.header, CLAIM)
-        self._stages: dict[str, Span] = {}
+        self._stages = {}
         self._block(routine.body)
         self.forget(mark)
         self.routine = None

@@ -31,10 +31,6 @@ class Symbol:
     item: object = None
     path: str | None = None
 
-    @property
-    def is_bool(self) -> bool:
-        return self.sort == "bool"
-
 
 def kinds(*named: Kind) -> frozenset[Kind]:
     return frozenset(named)
