@@ -1,0 +1,1 @@
+"""The workbench on the terminal: the only room that knows Textual."""
