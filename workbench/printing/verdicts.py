@@ -49,7 +49,8 @@ def claim_lines(routine: str, c: ClaimReport) -> Iterator[str]:
 
 
 def _missing(leans_on: tuple[str, ...], obligations: tuple[Decided, ...]) -> Iterator[str]:
-    for d in obligations:
+    broken = [d for d in obligations if d.verdict == "refuted"]
+    for d in broken or obligations:
         if d.verdict != "proved":
             yield from _reasons(d, f"{visible(d.obligation.case)}: ")
     if leans_on:

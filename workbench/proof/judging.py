@@ -10,15 +10,16 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
-from itertools import product as choices_of
 from typing import Literal
 
+from workbench.algebra.evaluate import Definition, TooLarge, Undefined, Value, evaluate
+from workbench.algebra.terms import variables
 from workbench.program import mathematics, obligations
-from workbench.program.measures import Measure, Site, loop_candidates, routine_candidates
 from workbench.program.obligation import Lean, Obligation
 from workbench.program.obligations import Owed
 from workbench.program.priced import Claim, Program
 from workbench.proof.deciding import Decider, Finding
+from workbench.proof.measuring import Choosing
 from workbench.proof.report import (
     ClaimReport,
     Decided,
@@ -31,9 +32,6 @@ from workbench.proof.report import (
 )
 from workbench.proof.search import SECONDS, Stopped
 from workbench.proof.trying import Broken, broken_claims
-
-# Combinations of measures tried for routines that call each other in a circle.
-MEASURE_LIMIT = 60
 
 # For claims that the tool made up itself: most are proved at once or never.
 CANDIDATE_SECONDS = 0.3
@@ -120,12 +118,17 @@ class _Judge:
         if self.cancelled is not None and self.cancelled():
             raise Stopped("the caller wants no answer any more")
 
-    def _decide(self, obligation: Obligation, without: frozenset[Lean] = frozenset()) -> Finding:
+    def _decide(
+        self, obligation: Obligation, without: frozenset[Lean] = frozenset(), seconds: float | None = None
+    ) -> Finding:
         self._stop_if_cancelled()
-        quick = obligation.claim is not None and self._inferred(
+        if obligation.claim is not None and self._inferred(
             Lean(obligation.routine, obligation.specification, obligation.claim)
-        )
-        return self.decider.decide(obligation, without, min(CANDIDATE_SECONDS, self.decider.seconds) if quick else None)
+        ):
+            seconds = CANDIDATE_SECONDS
+        if seconds is not None:
+            seconds = min(seconds, self.decider.seconds)
+        return self.decider.decide(obligation, without, seconds)
 
     def _step(self) -> None:
         self.done += 1
@@ -220,88 +223,19 @@ class _Judge:
                 r.side.append(self._decide(o, gone))
                 continue
             key = (o.routine, o.specification, o.claim)
-            if key in r.broken and o.kind == "claim":
-                # A run breaks the claim: that is shown, and no proof is looked for.
-                r.claims[key].append(Finding(o, without=gone, why="a run breaks this claim"))
-            else:
-                r.claims[key].append(self._decide(o, gone))
+            # Of a claim that a run breaks the other paths may be provable all the same, which is worth a short try.
+            seconds = CANDIDATE_SECONDS if key in r.broken else None
+            r.claims[key].append(self._decide(o, gone, seconds))
 
     def _measures(self) -> None:
-        """Measures that nobody wrote are chosen so that they fall wherever they must."""
-        chosen: dict[tuple[str, str], Measure] = {}
-        for name in self.routines:
-            self._loop_measures(self.routines[name])
-        done: set[str] = set()
-        for name in self.routines:
-            group = sorted(self.groups[name] & set(self.routines))
-            if not group or name in done:
-                continue
-            done.update(group)
-            self._group_measure(group, chosen)
-
-    def _loop_measures(self, r: _Routine) -> None:
-        for label in dict.fromkeys(s.specification for s in r.owed.sites if s.callee == s.specification):
-            sites = [s for s in r.owed.sites if s.callee == label == s.specification]
-            spec = r.owed.specifications[label]
-            tries = [spec.measure] if spec.measure is not None else loop_candidates(r.owed.loops[label])
-            r.side += self._first_that_falls([(sites, {label: m}) for m in tries], sites, spec.measure is not None)
-
-    def _group_measure(self, group: list[str], chosen: dict[tuple[str, str], Measure]) -> None:
-        sites = [
-            s
-            for name in group
-            for s in self.routines[name].owed.sites
-            if s.callee in self.groups[name] and s.callee != s.specification
-        ]
-        if not sites:
-            return
-        options = []
-        for name in group:
-            routine = self.program.routines[name]
-            options.append([routine.spec.measure] if routine.spec.measure is not None else routine_candidates(routine))
-        written = all(len(o) == 1 for o in options) and all(self.program.routines[n].spec.measure for n in group)
-        tries: list[tuple[list[Site], dict[str, Measure]]] = []
-        for combination in choices_of(*options):
-            tries.append((sites, dict(zip(group, combination, strict=True))))
-            if len(tries) >= MEASURE_LIMIT:
-                break
-        findings = self._first_that_falls(tries, sites, written)
-        for f in findings:
-            self.routines[f.obligation.routine].side.append(f)
-
-    def _first_that_falls(
-        self, tries: list[tuple[list[Site], dict[str, Measure]]], sites: list[Site], written: bool
-    ) -> list[Finding]:
-        """What is owed for the first of the measures under which all is proved; for the last one tried, if none is."""
-        best: list[Finding] = []
-        for _, measures in tries:
-            findings = []
-            for site in sites:
-                own = measures[site.specification if site.callee == site.specification else site.routine]
-                for o in site.make(own, measures[site.callee]):
-                    gone = frozenset(Lean(*k) for r in self.routines.values() for k in r.broken)
-                    findings.append(self._decide(o, gone))
-                    if findings[-1].proved is None and not written:
-                        break
-                if findings and findings[-1].proved is None and not written:
-                    break
-            if all(f.proved is not None for f in findings):
-                for _ in sites:
-                    self._step()
-                return findings
-            best = best or findings
-        for _ in sites:
-            self._step()
-        if not best:
-            site = sites[0]
-            missing = site.make((), ())
-            best = [Finding(o, why="there is no measure, and no parameter that could be one") for o in missing[:1]]
-        if not written:
-            for f in best:
-                if f.proved is None:
-                    f.witness, f.weak = None, None
-                    f.why = "no measure is written, and none of those tried falls"
-        return best
+        owed = {name: r.owed for name, r in self.routines.items()}
+        gone = frozenset(Lean(*key) for r in self.routines.values() for key in r.broken)
+        choosing = Choosing(self.program, owed, self.groups, lambda o: self._decide(o, gone))
+        for name, findings in choosing.findings().items():
+            self.routines[name].side += findings
+        for r in self.routines.values():
+            for _ in r.owed.sites:
+                self._step()
 
     # -------------------------------------------------------------- who holds whom up
     def _settle(self) -> None:
@@ -371,7 +305,12 @@ class _Judge:
         verdict: Whole = "verified"
         if any(c.verdict == "refuted" for c in claims) or any(d.verdict == "refuted" for d in side):
             verdict = "refuted"
-        elif any(c.verdict == "open" for c in claims) or any(d.verdict == "open" for d in side) or callee_fallen or Lean(name, "", "") in fallen:
+        elif (
+            any(c.verdict == "open" for c in claims)
+            or any(d.verdict == "open" for d in side)
+            or callee_fallen
+            or Lean(name, "", "") in fallen
+        ):
             verdict = "open"
         return RoutineReport(r.owed.routine, verdict, tuple(claims), side, self._warnings(r))
 
@@ -394,7 +333,7 @@ class _Judge:
         decided = [self._decided(f, fallen) for f in findings]
         broken = r.broken.get(key)
         if broken is not None:
-            decided = _with_witness(decided, broken)
+            decided = _with_witness(decided, broken, self.decider.definitions)
         verdict: Verdict = "proved"
         if broken is not None or any(d.verdict == "refuted" for d in decided):
             verdict = "refuted"
@@ -449,10 +388,25 @@ def _lean_words(lean: Lean) -> str:
     return f"{where}.{lean.claim}" if lean.claim else f"the side conditions of {lean.routine}"
 
 
-def _with_witness(decided: list[Decided], broken: Broken) -> list[Decided]:
-    """The run's start values stand at the obligation whose path they take, or else at the last one of the claim."""
-    places = [i for i, d in enumerate(decided) if d.obligation.kind == "claim" and d.verdict != "proved"]
-    if any(d.verdict == "refuted" for d in decided) or not places:
+def _with_witness(decided: list[Decided], broken: Broken, functions: Mapping[str, Definition]) -> list[Decided]:
+    """The run's start values stand at the obligation whose path they take."""
+    if any(d.verdict == "refuted" for d in decided):
         return decided
-    decided[places[-1]] = replace(decided[places[-1]], verdict="refuted", witness=broken.values, why="")
+    places = [i for i, d in enumerate(decided) if d.obligation.kind == "claim" and d.verdict != "proved"]
+    places = places or [i for i, d in enumerate(decided) if d.obligation.kind == "claim"]
+    fitting = [i for i in places if _takes_path(decided[i].obligation, broken.values, functions)]
+    for i in (fitting or places)[:1]:
+        decided[i] = replace(decided[i], verdict="refuted", witness=broken.values, why="", proof=None)
     return decided
+
+
+def _takes_path(obligation: Obligation, values: Mapping[str, Value], functions: Mapping[str, Definition]) -> bool:
+    """Whether all facts that speak of start values alone hold of the values."""
+    for fact in obligation.facts:
+        if all(v.name in values for v in variables(fact.formula)):
+            try:
+                if not evaluate(fact.formula, values, functions):
+                    return False
+            except (Undefined, TooLarge):
+                return False
+    return True

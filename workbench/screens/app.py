@@ -123,14 +123,17 @@ class Workbench(App[int]):
     def refill(self) -> None:
         """All panes say what the session knows now."""
         s = self.session
-        specification, refinement = self.query_one("#specification", Rows), self.query_one("#refinement", Rows)
+        specification = self.query_one("#specification", Rows)
         specification.fill(content.specification_rows(s, specification.size.width or 40, self.unfolded))
         self._fill_derivation(whole=True)
+        self._titles()
+
+    def _titles(self) -> None:
+        s = self.session
         changed = " (not saved)" if s.changed else ""
         self._title("specification", f"Specification  {visible(os.path.basename(s.disk.path))}{changed}")
         self._title("refinement", "Refinement  priced program" if self.priced else "Refinement  text")
         self._title("obligations", f"Obligations  {self._count()}")
-        refinement.refresh()
 
     def _fill_derivation(self, *, whole: bool = False) -> None:
         s = self.session
@@ -197,15 +200,9 @@ class Workbench(App[int]):
     def on_descendant_focus(self, event: events.DescendantFocus) -> None:
         name = event.widget.id or ""
         pane = {"list": "obligations", "derivation": "obligations", "formula": "specification"}.get(name, name)
-        if pane in PANES and pane != self.pane:
+        if pane in PANES and pane != self.pane and pane in self._shown_panes():
             self.pane = pane
-            self._retitle()
-
-    def _retitle(self) -> None:
-        for name in PANES:
-            title = self.query_one(f"#{name}-title", Static)
-            words = str(title.render())[2:]
-            self._title(name, words)
+            self._titles()
 
     def action_next_pane(self) -> None:
         self._go(1)
@@ -217,10 +214,12 @@ class Workbench(App[int]):
         order = ("specification", "refinement", "list", "derivation")
         here = self.focused.id if self.focused is not None and self.focused.id in order else order[0]
         name = order[(order.index(here) + by) % len(order)]
-        self.pane = "obligations" if name in ("list", "derivation") else name
+        pane = "obligations" if name in ("list", "derivation") else name
+        # The pane must be there to be gone to, and gone to before the other one is hidden.
+        self.query_one(f"#{pane}-pane").display = True
+        self.screen.set_focus(self.query_one(f"#{name}", Rows))
+        self.pane = pane
         self._arrange()
-        self.query_one(f"#{name}", Rows).focus()
-        self._retitle()
 
     # -------------------------------------------------------------- actions
     def action_step(self) -> None:

@@ -92,7 +92,8 @@ def _claim_rows(session: Session, place: ClaimPlace, width: int, unfolded: bool)
 
 
 def _missing_rows(report: ClaimReport, width: int) -> Iterator[Row]:
-    for d in report.obligations:
+    broken = [d for d in report.obligations if d.witness is not None]
+    for d in broken or report.obligations:
         if d.witness is not None:
             yield from rows_of(f"broken by {values_text(d.witness)}", width, "refuted", indent=5)
         elif d.verdict == "open":

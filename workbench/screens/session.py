@@ -223,7 +223,8 @@ class Session:
                     place.claim.label,
                 )
             ):
-                worst = next((i for i, d in enumerate(g.obligations) if d.verdict != "proved"), 0)
+                order = {"refuted": 0, "open": 1, "proved": 2}
+                worst = min(range(len(g.obligations)), key=lambda i: order[g.obligations[i].verdict])
                 self.select(index + worst)
                 return
             index += len(g.obligations)
