@@ -54,7 +54,10 @@ class Workbench(App[int]):
     #keys { height: 1; }
     """
     BINDINGS: ClassVar[list[BindingType]] = [
-        Binding(",".join(a.keys), a.name, a.help, show=False) for a in ACTIONS if a.name != "edit_claim"
+        # A screen of its own accord takes Tab for any widget that is shown; panes that are hidden must be reached too.
+        Binding(",".join(a.keys), a.name, a.help, show=False, priority=a.name.endswith("_pane"))
+        for a in ACTIONS
+        if a.name != "edit_claim"
     ]
 
     def __init__(self, session: Session, looks: Looks) -> None:
@@ -211,6 +214,8 @@ class Workbench(App[int]):
         self._go(-1)
 
     def _go(self, by: int) -> None:
+        if len(self.screen_stack) > 1 or self.editing is not None:
+            return
         order = ("specification", "refinement", "list", "derivation")
         here = self.focused.id if self.focused is not None and self.focused.id in order else order[0]
         name = order[(order.index(here) + by) % len(order)]
