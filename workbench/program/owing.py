@@ -6,6 +6,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
+from functools import partial
 
 from workbench.algebra.formulas import show
 from workbench.algebra.terms import Sort, Term, substitute, var
@@ -122,9 +123,9 @@ class Owing:
                 goal,
                 claim.span,
                 "; ".join(end.case) or "the only path",
-                lambda needed, shown=shown: program_steps(start, end.events, shown, needed, is_claim=True),
+                partial(program_steps, start, end.events, shown, is_claim=True),
                 claim,
-                before,  # type: ignore[misc]
+                before,
             )
 
     def _add(

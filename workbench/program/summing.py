@@ -137,7 +137,8 @@ class _Summing:
         highest = self._extreme([r.high for r in reached], up=True)
         if highest is None:
             return []
-        made, seen = [], set()
+        made: list[Claim] = []
+        seen: set[Term] = set()
         for place in (self.upper, self.variable):
             at = substitute(self.term(highest), {self.variable: place})
             before = self.partial(net, place)

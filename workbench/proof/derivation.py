@@ -245,6 +245,7 @@ def _said(
             }.get(kind, kind)  # fmt: skip
             after = _equation(atom, other.images[atom]) if atom in other.images else None
             return Line("one named simplification", words, _name(atom), after, depth)
+    raise ValueError(f"no words for {type(move).__name__}")
 
 
 def _law_line(law: Law, arguments: Sequence[Term], depth: int) -> Line:

@@ -63,7 +63,7 @@ class Offer:
             if self.rows[index].equation:
                 factor, ref = item
                 assert isinstance(factor, Poly)
-                taken[ref] = plus(taken.get(ref, NOTHING), scaled(factor, multiplier))  # type: ignore[index]
+                taken[ref] = plus(taken.get(ref, NOTHING), scaled(factor, multiplier))
             else:
                 items.append(Item(multiplier, item))  # type: ignore[arg-type]
         items.extend(EquationItem(multiplier, ref) for ref, multiplier in taken.items())
@@ -98,8 +98,8 @@ def basic_offer(state: State) -> Offer:
             row = atom_row(state.algebra, atom, which)
             offer.inequality(row.poly, row.relation == ">", (FromAtom(atom, which),))
     monomials: dict[Monomial, None] = {}
-    for row in offer.rows:
-        monomials.update(dict.fromkeys(row.coefficients))  # type: ignore[arg-type]
+    for offered in offer.rows:
+        monomials.update(dict.fromkeys(offered.coefficients))
     for mono in list(monomials)[:MONOMIAL_LIMIT]:
         _sign_of_monomial(state, offer, mono)
     return offer
@@ -149,9 +149,9 @@ def product_leaf(state: State, deadline: float | None = None) -> Leaf | None:
     for _, _, product, strict, factors in ranked[:PRODUCT_LIMIT]:
         offer.inequality(product, strict, factors)
     _equations_times_monomials(state, offer, wanted)
-    for row in list(offer.rows):
-        for mono in list(row.coefficients)[:MONOMIAL_LIMIT]:
-            _sign_of_monomial(state, offer, mono)  # type: ignore[arg-type]
+    for offered in list(offer.rows):
+        for mono in list(offered.coefficients)[:MONOMIAL_LIMIT]:
+            _sign_of_monomial(state, offer, mono)
     return offer.leaf(deadline)
 
 

@@ -6,11 +6,14 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal, TypeAlias
 
+from workbench.algebra.evaluate import Definition
+from workbench.algebra.normal import Algebra
 from workbench.algebra.terms import Rational, Term
 from workbench.errors import Problem, Span
 from workbench.program.obligation import Obligation
 from workbench.program.priced import Claim, Program, Routine
 from workbench.proof.kernel import Proved
+from workbench.proof.laws import Law
 
 Verdict: TypeAlias = Literal["proved", "open", "refuted"]
 Whole: TypeAlias = Literal["verified", "open", "refuted"]

@@ -133,12 +133,15 @@ class _Trials:
 def _smaller(value: Value) -> Sequence[Value]:
     if isinstance(value, bool):
         return (False,) if value else ()
-    return [v for v in (0, 1, 2, 3, 4) if v < abs(value)]
+    return [v for v in (0, 1, 2, 3, 4) if v < value or v < -value]
 
 
 def _size(values: Mapping[str, Value]) -> Rational:
     """How far from nothing the values are: the plainest of them are shown."""
-    return sum(abs(v) for v in values.values())
+    total: Rational = 0
+    for v in values.values():
+        total += v if v > 0 else -v
+    return total
 
 
 def _environment(activation: Activation) -> Values:

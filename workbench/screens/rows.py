@@ -49,7 +49,18 @@ class Rows(ScrollView, can_focus=True):
         self.cursor = self._near(min(self.cursor, max(0, len(rows) - 1)))
         self.virtual_size = Size(self.size.width, len(rows))
         self._keep_in_sight()
+        if key is not None:
+            self._keep_rest_in_sight()
         self.refresh()
+
+    def _keep_rest_in_sight(self) -> None:
+        """What belongs to the cursor's row stands below it, up to the next one that the cursor can stand on."""
+        after = (i for i in range(self.cursor + 1, len(self.rows)) if self.rows[i].key is not None)
+        end = next(after, len(self.rows))
+        height = max(1, self.size.height)
+        top = min(self.cursor, end - height)
+        if top > self.scroll_offset.y:
+            self.scroll_to(y=top, animate=False, immediate=True)
 
     @property
     def key(self) -> object:
@@ -58,10 +69,8 @@ class Rows(ScrollView, can_focus=True):
 
     def _near(self, index: int) -> int:
         """The nearest row that stands for something; the row itself where none does."""
-        for i in (*range(index, len(self.rows)), *range(index, -1, -1)):
-            if i < len(self.rows) and self.rows[i].key is not None:
-                return i
-        return index
+        stops = [i for i, r in enumerate(self.rows) if r.key is not None]
+        return min(stops, key=lambda i: (i < index, abs(i - index)), default=index)
 
     # -------------------------------------------------------------- drawing
     def render_line(self, y: int) -> Strip:
