@@ -37,7 +37,7 @@ Answers go to stdout, messages to stderr. Exit status: 0 all well, 1 something o
 2 something unreadable or wrongly used.
 """
 
-OK, UNUSABLE, INTERRUPTED, PIPE_CLOSED = 0, 2, 130, 141  # as in commands.exits, which would cost an import of enum
+OK, UNUSABLE, INTERRUPTED, PIPE_CLOSED = 0, 2, 130, 141  # as in workbench.exits, which would cost an import of enum
 
 
 def main(argv: list[str] | None = None) -> int:

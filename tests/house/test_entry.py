@@ -13,8 +13,8 @@ import pytest
 
 import workbench
 from workbench import __main__ as entry
-from workbench.commands.exits import Exit
 from workbench.errors import UsageError
+from workbench.exits import Exit
 
 ROOT = Path(__file__).resolve().parents[2]
 Call = Callable[[list[str]], int]

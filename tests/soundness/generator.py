@@ -1,7 +1,7 @@
 """Random sheets as text: tariffs, routines of many shapes, and claims of which many are true and many are nearly so.
 
-Claims are fitted to runs from zero and then bent: by one, in their relation, in what they take for granted of the levels at the
-start. Everything comes from one seed.
+Claims are fitted to runs from zero and then bent: by one, in their relation, in what they take for granted of the
+levels at the start. Everything comes from one seed.
 """
 
 from __future__ import annotations
@@ -69,7 +69,9 @@ class Generator:
         head += ["tariff t", "  counter time", "  counter writes"]
         head += ["  gauge stack over time", f"  gauge heap{r.choice(['', ' over time', ' over writes'])}"]
         if r.random() < 0.6:
-            head.append("  on call: " + r.choice(["hold frame stack", "spend 1 time, hold frame stack", "spend 2 time"]))
+            head.append(
+                "  on call: " + r.choice(["hold frame stack", "spend 1 time, hold frame stack", "spend 2 time"])
+            )
         if r.random() < 0.3:
             head.append("  on declare: " + r.choice(["hold 4*size stack", "spend 1 time", "hold size heap"]))
         if r.random() < 0.3:
@@ -81,7 +83,9 @@ class Generator:
         return Sketch("\n".join(head) + "\n", tuple(made))
 
     def routine(self, name: str, others: Sequence[str]) -> tuple[str, str, str]:
-        shape = self.rng.choice(("plain", "linear", "linear", "double", "half", "for", "for", "while", "nested", "stage"))
+        shape = self.rng.choice(
+            ("plain", "linear", "linear", "double", "half", "for", "for", "while", "nested", "stage")
+        )
         self.fresh = 0
         self.others = others
         body = getattr(self, f"_{shape}")(name)
@@ -107,7 +111,9 @@ class Generator:
         return f"  if n > 0 then\n{self.block(1, ['n'], '    ')}    {name}(n div 2)\n  end\n"
 
     def _for(self, name: str) -> str:
-        low, word, high = self.rng.choice((("0", "below", "n"), ("1", "to", "n"), ("0", "to", "n"), ("1", "below", "n")))
+        low, word, high = self.rng.choice(
+            (("0", "below", "n"), ("1", "to", "n"), ("0", "to", "n"), ("1", "below", "n"))
+        )
         return f"  for i from {low} {word} {high} do\n{self.block(2, ['n', 'i'], '    ')}  end\n"
 
     def _nested(self, name: str) -> str:
@@ -145,7 +151,8 @@ class Generator:
         kind = r.choice(("spend", "spend", "hold", "acquire", "if", "either", "var", "any", "call", "state", "loop"))
         amount = self.amount(names)
         if kind == "hold" and depth:
-            return f"{indent}hold {amount} {self.gauge()} do\n{self.statement(names, indent + '  ', depth - 1)}{indent}end\n"
+            inside = self.statement(names, indent + "  ", depth - 1)
+            return f"{indent}hold {amount} {self.gauge()} do\n{inside}{indent}end\n"
         if kind == "acquire":
             gauge = self.gauge()
             given_back = r.choice((amount, amount, self.amount(names)))
@@ -159,17 +166,22 @@ class Generator:
             return f"{indent}either\n{first}{indent}else\n{second}{indent}end\n"
         if kind == "var":
             name = self.name()
-            return f"{indent}var {name}: nat size {r.choice(('1', 'n', '3'))} := {amount}\n{indent}spend {name} writes\n"
+            return (
+                f"{indent}var {name}: nat size {r.choice(('1', 'n', '3'))} := {amount}\n{indent}spend {name} writes\n"
+            )
         if kind == "any":
             name = self.name()
-            return f"{indent}var {name}: nat\n{indent}{name} := any where {name} <= {amount}\n{indent}spend {name} time\n"
+            return (
+                f"{indent}var {name}: nat\n{indent}{name} := any where {name} <= {amount}\n{indent}spend {name} time\n"
+            )
         if kind == "call" and self.others:
             return f"{indent}{r.choice(self.others)}({r.choice(('n', 'n + 1', '2', 'n div 2'))})\n"
         if kind == "state":
             return f"{indent}level := {r.choice(('0', 'min(9, level + 1)', 'level div 2', '9 - level', 'level - 1'))}\n"
         if kind == "loop" and depth:
             name = self.name()
-            return f"{indent}for {name} from 1 to {r.choice(('n', '3', 'frame'))} do\n{indent}  spend 1 time\n{indent}end\n"
+            high = r.choice(("n", "3", "frame"))
+            return f"{indent}for {name} from 1 to {high} do\n{indent}  spend 1 time\n{indent}end\n"
         return f"{indent}spend {amount} {r.choice(COUNTERS)}\n"
 
     def amount(self, names: Sequence[str]) -> str:
@@ -273,7 +285,7 @@ def _solved(values: dict[tuple[int, int], Fraction], size: int) -> list[Fraction
             if i != place and rows[i][column]:
                 rows[i] = [x - rows[i][column] * y for x, y in zip(rows[i], rows[place], strict=True)]
         pivots.append(column)
-    if any(row[-1] for row in rows[len(pivots):]):
+    if any(row[-1] for row in rows[len(pivots) :]):
         return None
     solution = [Fraction(0)] * size
     for i, column in enumerate(pivots):

@@ -2,8 +2,9 @@
 
     python tests/soundness/hunt.py --claims 20000 [--seed 1] [--jobs 2] [--seconds 0.3]
 
-Random sheets are judged; every proved claim of a routine is then compared with runs from random inputs, levels, peaks, areas and
-counters at the start, and choices. Prints how many claims were tried, proved, refuted and left open, and every violation.
+Random sheets are judged; every proved claim of a routine is then compared with runs from random inputs, levels,
+peaks, areas and counters at the start, and choices. Prints how many claims were tried, proved, refuted and left
+open, and every violation.
 """
 
 from __future__ import annotations
@@ -21,14 +22,14 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).resolve().parents[2]))
 
-from tests.soundness.generator import Generator, priced  # noqa: E402
-from workbench.algebra.evaluate import TooLarge, Undefined, Value, compile_term  # noqa: E402
-from workbench.errors import UllageError  # noqa: E402
-from workbench.program.choosing import RandomChooser  # noqa: E402
-from workbench.program.priced import Program  # noqa: E402
-from workbench.program.running import Machine  # noqa: E402
-from workbench.proof.judging import judge  # noqa: E402
-from workbench.proof.report import RoutineReport  # noqa: E402
+from tests.soundness.generator import Generator, priced
+from workbench.algebra.evaluate import TooLarge, Undefined, Value, compile_term
+from workbench.errors import UllageError
+from workbench.program.choosing import RandomChooser
+from workbench.program.priced import Program
+from workbench.program.running import Machine
+from workbench.proof.judging import judge
+from workbench.proof.report import RoutineReport
 
 RUNS = 60
 LEVELS = (0, 1, -1, 7, Fraction(1, 2), Fraction(-9, 4), 100, -30)

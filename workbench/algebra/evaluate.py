@@ -1,8 +1,8 @@
 """Exact values of terms: integers and fractions, never floating point.
 
-A term is compiled once into a Python function of its names' values, so that thousands of evaluations are cheap. What has no
-value raises `Undefined`; what would take too long or too much room raises `TooLarge`. `and`, `or`, `implies` and `if` look at
-what follows them only where it counts.
+A term is compiled once into a Python function of its names' values, so that thousands of evaluations are cheap. What
+has no value raises `Undefined`; what would take too long or too much room raises `TooLarge`. `and`, `or`, `implies`
+and `if` look at what follows them only where it counts.
 """
 
 from __future__ import annotations
@@ -95,8 +95,8 @@ class _Compiler:
         return name
 
     def _source(self, term: Term, bound: Mapping[str, str]) -> str:
-        """Shared parts are bound by `:=` where they are certain to be evaluated first; here parts are written out in full,
-        which `function` limits in length.
+        """Shared parts are bound by `:=` where they are certain to be evaluated first; here parts are written out in
+        full, which `function` limits in length.
         """
         memo: dict[Term, str] = {}
         stack = [term]

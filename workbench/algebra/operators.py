@@ -257,7 +257,9 @@ class Operators:
         return result
 
     def power(self, base: Poly, exponent: Poly) -> Poly:
-        """base^exponent. For a number b > 0, b^(x + y) = b^x b^y whatever x and y; of other bases nothing is assumed."""
+        """base^exponent. For a number b > 0, b^(x + y) = b^x b^y whatever x and y; of other bases nothing is
+        assumed.
+        """
         fixed = exponent.constant
         number = base.constant
         if fixed is not None and not isinstance(fixed, Fraction):

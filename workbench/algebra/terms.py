@@ -152,6 +152,16 @@ def conjunction(formulas: list[Term] | tuple[Term, ...]) -> Term:
     return result
 
 
+def disjunction(formulas: list[Term] | tuple[Term, ...]) -> Term:
+    parts = [f for f in formulas if f.op != "false"]
+    if not parts:
+        return FALSE
+    result = parts[0]
+    for f in parts[1:]:
+        result = app("or", result, f)
+    return result
+
+
 def implies(condition: Term, conclusion: Term) -> Term:
     return conclusion if condition.op == "true" else app("implies", condition, conclusion)
 
@@ -218,7 +228,8 @@ def fold(
 
 
 def substitute(term: Term, replacement: Mapping[Term, Term], memo: dict[Term, Term] | None = None) -> Term:
-    """All variables of `replacement` replaced at once; bound variables of sums are renamed where they would catch a name.
+    """All variables of `replacement` replaced at once; bound variables of sums are renamed where they would catch a
+    name.
 
     A caller that substitutes into many terms passes one `memo` dict, so that shared parts are walked once.
     """
@@ -257,7 +268,8 @@ def _substitute_sum(term: Term, replacement: Mapping[Term, Term]) -> Term:
     used = {v: r for v, r in inner.items() if v in free}
     if any(bound in variables(r) for r in used.values()):
         taken = {v.name for v in free}.union(*({v.name for v in variables(r)} for r in used.values()))
-        fresh = var(next(f"{bound.name}_{i}" for i in range(1, 1_000_000) if f"{bound.name}_{i}" not in taken), bound.sort)
+        free_names = (f"{bound.name}_{i}" for i in range(1, 1_000_000) if f"{bound.name}_{i}" not in taken)
+        fresh = var(next(free_names), bound.sort)
         body = substitute(body, {bound: fresh})
         bound = fresh
     return summation(bound, substitute(low, replacement), substitute(high, replacement), substitute(body, used))

@@ -9,9 +9,10 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 from workbench import __version__
-from workbench.commands.exits import Exit
 from workbench.errors import UsageError
+from workbench.exits import Exit
 from workbench.library.checking import check_sheet
+from workbench.library.folders import sheets_below
 from workbench.printing.cautions import CAUTIONS
 from workbench.printing.documents import SCHEMA, sheet_document
 from workbench.printing.messages import format_problem, visible
@@ -29,7 +30,6 @@ Proves every claim of every sheet below the paths: one line a claim, with the va
 
 Exit status: 0 all verified, 1 something open or refuted, 2 something unreadable or wrongly used.
 """
-ENDING = ".ullage"
 BAR_WIDTH = 30
 
 
@@ -142,24 +142,6 @@ def _set(options: Options, name: str, value: str) -> None:
         raise UsageError(f"--seconds takes a positive number of seconds, not {value!a}")
     else:
         options.seconds = number
-
-
-def sheets_below(paths: Sequence[str]) -> list[str]:
-    """Every sheet once, in order; hidden folders are left out. Raises UsageError for what is not there."""
-    found: dict[str, str] = {}
-    for path in paths:
-        if os.path.isdir(path):
-            for folder, folders, files in os.walk(path):
-                folders[:] = sorted(f for f in folders if not f.startswith("."))
-                for name in sorted(files):
-                    if name.endswith(ENDING):
-                        place = os.path.join(folder, name)
-                        found.setdefault(os.path.realpath(place), place)
-        elif os.path.exists(path):
-            found.setdefault(os.path.realpath(path), path)
-        else:
-            raise UsageError(f"there is no file or folder {path!a}")
-    return list(found.values())
 
 
 # ---------------------------------------------------------------- the work

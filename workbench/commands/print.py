@@ -7,10 +7,10 @@ import sys
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
-from workbench.commands.check import sheets_below
-from workbench.commands.exits import Exit
 from workbench.errors import UsageError
+from workbench.exits import Exit
 from workbench.library.checking import check_loaded
+from workbench.library.folders import sheets_below
 from workbench.library.loading import load
 from workbench.printing.messages import format_problem
 from workbench.printing.plain import ending, sheet_text

@@ -12,8 +12,8 @@ from typing import Any
 from workbench.algebra.evaluate import TooLarge, Undefined, Value, is_of_sort
 from workbench.algebra.formulas import show_number
 from workbench.algebra.terms import Sort
-from workbench.commands.exits import Exit
 from workbench.errors import UsageError
+from workbench.exits import Exit
 from workbench.library.loading import load
 from workbench.printing.messages import format_problem, visible
 from workbench.program.choosing import Chooser, RandomChooser, ScriptChooser

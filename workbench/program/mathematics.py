@@ -67,7 +67,7 @@ def measure_of(function: Function) -> Term | None:
 def function_obligations(program: Program, function: Function, group: frozenset[str]) -> tuple[Obligation, ...]:
     """`group`: the functions that it is mutually recursive with. None of them may be unfolded in the proofs."""
     todo = _List(f"function {function.name}", program)
-    facts = _constants(program)
+    facts = constant_facts(program)
     if function.given is not None:
         todo.domain(function.given, facts, function.span)
         facts = [*facts, Fact(function.given, f"given of {function.name}", None, function.span)]
@@ -99,7 +99,7 @@ def _falls(
 def law_obligations(program: Program, law: Law) -> tuple[Obligation, ...]:
     """The law itself; by induction: the base, and the step from n to n + 1."""
     todo = _List(f"law {law.name}", program)
-    facts = _constants(program)
+    facts = constant_facts(program)
     n = None
     if law.induction_on is not None:
         n = next(var(p.name, p.sort) for p in law.parameters if p.name == law.induction_on)
@@ -113,7 +113,7 @@ def law_obligations(program: Program, law: Law) -> tuple[Obligation, ...]:
         todo.add("claim", "for all values", known, law.formula, law.span)
         return tuple(todo.found)
     base, after = {n: num(law.induction_from)}, {n: app("+", n, ONE)}
-    at_base = _constants(program) + ([] if given is None else [Fact(substitute(given, base), "given")])
+    at_base = constant_facts(program) + ([] if given is None else [Fact(substitute(given, base), "given")])
     todo.add("claim", f"base, {n.name} = {law.induction_from}", at_base, substitute(law.formula, base), law.span)
     hypothesis = law.formula if given is None else implies(given, law.formula)
     step = [*facts, Fact(hypothesis, f"the law for {n.name}")]

@@ -12,11 +12,13 @@ from dataclasses import replace
 
 from workbench.algebra.formulas import show
 from workbench.algebra.normal import Algebra
-from workbench.algebra.terms import Sort, Term, app, conjunction, names, negate, substitute, var
+from workbench.algebra.terms import Sort, Term, app, conjunction, disjunction, names, negate, substitute, var
 from workbench.errors import Span, UllageError
 from workbench.program import specifying
+from workbench.program.changes import changed_by
 from workbench.program.choices import candidates
 from workbench.program.domains import of_sort
+from workbench.program.mathematics import constant_facts
 from workbench.program.obligation import Fact
 from workbench.program.owing import Ground, Owing
 from workbench.program.paths import Branch, Event, Path, joined
@@ -72,7 +74,7 @@ class Walk:
         spec = self.routine.spec
         self.specifications[""] = spec
         start = Path(
-            facts=tuple(self._constants() + self._states() + specifying.start_facts(self.names, self.routine.changed))
+            facts=tuple(constant_facts(self.program) + self._states() + specifying.start_facts(self.names, self.routine.changed))
         )
         start = self._with_givens(start, spec)
         self.start = tuple(f.formula for f in start.facts)
@@ -84,13 +86,6 @@ class Walk:
                 if s.condition is not None and s.name in self.routine.changed:
                     self.owing.owe(end, "range", s.condition, spec.span, f"what holds of {s.name} at the end")
             self.owing.claims(end, spec)
-
-    def _constants(self) -> list[Fact]:
-        return [
-            Fact(c.condition, f"constant {c.name}", None, c.span)
-            for c in self.program.constants.values()
-            if c.condition is not None and c.value is None
-        ]
 
     def _states(self) -> list[Fact]:
         return [
@@ -166,7 +161,7 @@ class Walk:
                 conjunction([of_sort(c, s.sort), substitute(s.condition, {target: c})])
                 for c in candidates(target, s.condition)
             ]
-            self.owing.owe(p, "choice", _disjunction(exists), s.span, f"there is a value for {s.target}")
+            self.owing.owe(p, "choice", disjunction(exists), s.span, f"there is a value for {s.target}")
         return p.then(event)
 
     def _spend(self, s: Spend, p: Path) -> Path:
@@ -194,7 +189,8 @@ class Walk:
         """Acquire, body, release of the same amount: its value on entry is named where the body could change it."""
         kept = s.amount
         name = f"hold@{self.names.next_state()}"
-        changes = names(s.amount) & _assigned(s.body, self.program)
+        of_callee = self.program.routines
+        changes = names(s.amount) & changed_by(s.body, self.program.gauges, lambda c: of_callee[c].changed)
         opened = []
         for p in paths:
             self.owing.amount(p, s.amount, s.span)
@@ -432,29 +428,6 @@ def _count(block: Block) -> int:
     return total
 
 
-def _assigned(block: Block, program: Program) -> set[str]:
-    """Names that a block may change."""
-    found: set[str] = set()
-    work = list(block)
-    while work:
-        s = work.pop()
-        match s:
-            case Assign() | Choose():
-                found.add(s.target)
-            case If():
-                work += [*s.then, *s.otherwise]
-            case Either():
-                work += [t for b in s.branches for t in b]
-            case Hold():
-                work += s.body
-            case Loop() | Stage():
-                work += s.body
-                found |= s.changed
-            case Call():
-                found |= program.routines[s.routine].changed | {s.target or ""}
-    return found
-
-
 def _connected(facts: list[Fact], seen: set[str]) -> list[Fact]:
     """The facts that share names, directly or through others, with those in sight."""
     kept: list[Fact] = []
@@ -471,11 +444,4 @@ def _connected(facts: list[Fact], seen: set[str]) -> list[Fact]:
 
 def _article(sort: str) -> str:
     return {"nat": "a natural number", "int": "an integer", "real": "a number", "bool": "true or false"}[sort]
-
-
-def _disjunction(formulas: Sequence[Term]) -> Term:
-    result = formulas[0]
-    for f in formulas[1:]:
-        result = app("or", result, f)
-    return result
 

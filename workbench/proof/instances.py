@@ -1,6 +1,7 @@
 """Which instances of laws are worth trying in a state, in stages: equations that simplify first, then bounds.
 
-Only atoms that stand in rows or undecided facts are looked at; limiting instances to them is what keeps the search short.
+Only atoms that stand in rows or undecided facts are looked at; limiting instances to them is what keeps the search
+short.
 """
 
 from __future__ import annotations
@@ -22,7 +23,8 @@ DEGREE_LIMIT = 8
 
 
 def deep_atoms(state: State) -> list[Atom]:
-    """All atoms of rows and undecided facts, at any depth, that are no part of a sum's summand; in order of first sight.
+    """All atoms of rows and undecided facts, at any depth, that are no part of a sum's summand; in order of first
+    sight.
 
     Atoms that were replaced by what they equal come last: what the laws say of them still holds.
     """
@@ -45,7 +47,9 @@ _LAWFUL = frozenset(("pow", "lg", "fact", "binom", "floor", "call", "sum"))
 
 # ---------------------------------------------------------------- stage 1: equations that simplify
 def simplifying(state: State, atoms: Iterable[Atom], functions: Mapping[str, Law]) -> Iterator[Move]:
-    """Steps of powers with a symbolic base, halves inside lg, closed forms of sums, definitions with fixed arguments."""
+    """Steps of powers with a symbolic base, halves inside lg, closed forms of sums, definitions with fixed
+    arguments.
+    """
     for atom in atoms:
         match atom.kind:
             case "pow" if not atom.data:
@@ -110,7 +114,9 @@ def _closed_sum(state: State, atom: Atom) -> Iterator[Move]:
 
 
 def antidifference(state: State, atom: Atom) -> Poly | None:
-    """F with F(i) - F(i - 1) = f(i), for f(i) = i^d * b^(c*i) with a number b: undetermined coefficients from the top down."""
+    """F with F(i) - F(i - 1) = f(i), for f(i) = i^d * b^(c*i) with a number b: undetermined coefficients from the
+    top down.
+    """
     algebra = state.algebra
     body = atom.parts[2]
     bound = algebra.bound_atom(str(atom.data[0]))
@@ -280,7 +286,9 @@ def matching(laws: Iterable[Law], atoms: Iterable[Atom], algebra_normal: Mapping
 
 
 def _match(pattern: Atom, atom: Atom, names: Mapping[str, Term]) -> tuple[Poly, ...] | None:
-    """Arguments for all parameters, read off an atom of the same kind whose pattern parts are plain parameters or equal."""
+    """Arguments for all parameters, read off an atom of the same kind whose pattern parts are plain parameters or
+    equal.
+    """
     if pattern.kind in ("var", "ind", "truth", "pos") or pattern.kind != atom.kind or pattern.data != atom.data:
         return None
     bound: dict[str, Poly] = {}

@@ -47,9 +47,38 @@ from workbench.proof.kernel_state import State
 from workbench.proof.laws import Law
 
 __all__ = [
-    "NONE", "ByRemainder", "Certificate", "Cut", "Define", "Dependencies", "EquationItem", "FromAtom", "Instance", "Invert",
-    "Item", "Known", "Leaf", "Move", "NotProved", "OpenPositivePart", "Proved", "Relation", "Rename", "Row", "RowRef",
-    "Shift", "State", "SumLaw", "Then", "ThreeWays", "atom_facts", "atom_row", "check", "law_instance", "moved", "start",
+    "NONE",
+    "ByRemainder",
+    "Certificate",
+    "Cut",
+    "Define",
+    "Dependencies",
+    "EquationItem",
+    "FromAtom",
+    "Instance",
+    "Invert",
+    "Item",
+    "Known",
+    "Leaf",
+    "Move",
+    "NotProved",
+    "OpenPositivePart",
+    "Proved",
+    "Relation",
+    "Rename",
+    "Row",
+    "RowRef",
+    "Shift",
+    "State",
+    "SumLaw",
+    "Then",
+    "ThreeWays",
+    "atom_facts",
+    "atom_row",
+    "check",
+    "law_instance",
+    "moved",
+    "start",
     "sum_instance",
 ]
 
@@ -82,7 +111,9 @@ _MINT = object()
 
 
 class Proved:
-    """facts => goal holds for all values. `used`: indices of the facts that the proof rests on; `laws`: user laws and functions."""
+    """facts => goal holds for all values. `used`: indices of the facts that the proof rests on; `laws`: user laws
+    and functions.
+    """
 
     __slots__ = ("facts", "goal", "used", "laws", "certificate")
 
@@ -146,7 +177,9 @@ def check(
 
 
 def _contradiction(state: State, leaf: Leaf) -> Dependencies:
-    """Adds the items up. All of them are >= 0 (products of nonnegative things, or multiples of zero); the sum must be absurd."""
+    """Adds the items up. All of them are >= 0 (products of nonnegative things, or multiples of zero); the sum must
+    be absurd.
+    """
     sum_, strict, used = NOTHING, False, NONE
     for item in leaf.items:
         if isinstance(item, EquationItem):

@@ -1,4 +1,6 @@
-"""What the kernel knows on a branch: rows of a comparison each, indicators that equal 1, and what every atom says for free."""
+"""What the kernel knows on a branch: rows of a comparison each, indicators that equal 1, and what every atom says
+for free.
+"""
 
 from __future__ import annotations
 

@@ -12,7 +12,9 @@ from workbench.proof.laws import Law
 
 
 def law_instance(algebra: Algebra, law: Law, args: Sequence[Poly]) -> Poly:
-    """The indicator of (sorts and condition) implies formula. Integer parameters need arguments that are integer-valued for sure."""
+    """The indicator of (sorts and condition) implies formula. Integer parameters need arguments that are
+    integer-valued for sure.
+    """
     if len(args) != len(law.parameters):
         raise NotProved(f"the law '{law.name}' has {len(law.parameters)} parameters")
     guard = UNITY

@@ -1,8 +1,8 @@
 """The laws that the kernel knows beside its normal form: each a formula that holds for all values of its parameters.
 
 A law is data: parameters with sorts, a condition, a formula, and where it is from. An instance puts expressions for the
-parameters; that a `nat` or `int` parameter gets an integer is checked by the kernel, that a `nat` is not negative and that
-the condition holds become part of the instance: (sorts and condition) implies formula.
+parameters; that a `nat` or `int` parameter gets an integer is checked by the kernel, that a `nat` is not negative
+and that the condition holds become part of the instance: (sorts and condition) implies formula.
 Every law here is tried on a range of values with edges in the tests. Expressions are total as `algebra.normal` says.
 """
 

@@ -133,7 +133,9 @@ class Line:
         return True
 
     def _decide_condition(self, indicator: Poly) -> bool:
-        """condition implies formula: decides what the condition consists of, which stands in all terms but the constant one."""
+        """condition implies formula: decides what the condition consists of, which stands in all terms but the
+        constant one.
+        """
         for _ in range(CONDITION_LIMIT):
             current = self.effort.algebra.rewrite(indicator, self.state.images)
             terms = [{a for a, _ in mono} for mono in current.terms if mono]

@@ -13,7 +13,9 @@ DIVISOR_LIMIT = 8
 
 
 def row_splits(line: Line) -> list[Atom]:
-    """Indicators and positive parts that stand in rows, those of the goal (which rests on no fact) first, outermost first."""
+    """Indicators and positive parts that stand in rows, those of the goal (which rests on no fact) first, outermost
+    first.
+    """
     found: dict[Atom, None] = {}
     rows = sorted(line.state.rows.values(), key=lambda r: bool(r.deps))
     for row in rows:

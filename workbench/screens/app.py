@@ -15,8 +15,8 @@ from textual.containers import Horizontal, Vertical
 from textual.widgets import Input, Static
 from textual.worker import get_current_worker
 
-from workbench.commands.exits import Exit
 from workbench.errors import SheetError, UsageError
+from workbench.exits import Exit
 from workbench.printing.messages import visible
 from workbench.proof.search import Stopped
 from workbench.screens import content

@@ -13,8 +13,8 @@ from textual.app import App, ComposeResult
 from textual.binding import Binding, BindingType
 from textual.widgets import Static
 
-from workbench.commands.check import sheets_below
 from workbench.errors import UsageError
+from workbench.library.folders import sheets_below
 from workbench.printing.messages import visible
 from workbench.screens.content import Row
 from workbench.screens.looks import PLAIN
