@@ -132,7 +132,8 @@ def law_condition(law: Law) -> Term:
     return conjunction(parts)
 
 
-def _constants(program: Program) -> list[Fact]:
+def constant_facts(program: Program) -> list[Fact]:
+    """What is known of the open constants, everywhere."""
     return [
         Fact(c.condition, f"constant {c.name}", None, c.span)
         for c in program.constants.values()

@@ -73,9 +73,8 @@ class Walk:
     def run(self) -> None:
         spec = self.routine.spec
         self.specifications[""] = spec
-        start = Path(
-            facts=tuple(constant_facts(self.program) + self._states() + specifying.start_facts(self.names, self.routine.changed))
-        )
+        known = [*constant_facts(self.program), *self._states()]
+        start = Path(facts=(*known, *specifying.start_facts(self.names, self.routine.changed)))
         start = self._with_givens(start, spec)
         self.start = tuple(f.formula for f in start.facts)
         for component in spec.measure or ():
