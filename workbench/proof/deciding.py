@@ -12,18 +12,21 @@ from workbench.algebra.evaluate import Definition
 from workbench.algebra.normal import Algebra
 from workbench.algebra.terms import FALSE, Rational, Term, app, subterms, var
 from workbench.program.mathematics import law_condition
-from workbench.program.obligation import Fact, Lean, Obligation
+from workbench.program.obligation import Lean, Obligation
 from workbench.program.priced import Function, Program
 from workbench.program.priced import Law as UserLaw
 from workbench.proof import laws as lawbook
 from workbench.proof.kernel import Proved
 from workbench.proof.laws import Law
 from workbench.proof.refuting import QUICK_TRIES, THOROUGH_TRIES, tried
+from workbench.proof.relevance import relevant
 from workbench.proof.sampling import Sampler
 from workbench.proof.search import Attempt, Hints, Search
 
 # Whether a path is ever taken is worth this long, no more: the answer changes no verdict.
 CONTRADICTION_SECONDS = 0.1
+# A first attempt from few facts is quick or of no use.
+FEW_SECONDS = 0.25
 
 
 @dataclass(slots=True)
@@ -34,6 +37,7 @@ class Finding:
 
     obligation: Obligation
     proved: Proved | None = None
+    facts: tuple[int, ...] = ()  # which of the obligation's facts the proof was found from
     leans: frozenset[Lean] = frozenset()
     witness: Mapping[str, Rational | bool] | None = None
     weak: Mapping[str, Rational | bool] | None = None
@@ -71,21 +75,17 @@ class Decider:
     ) -> Finding:
         """Refuted, proved or neither, with no use of facts that lean on anything in `without`."""
         finding = Finding(obligation, without=without)
-        usable = [f for f in obligation.facts if f.lean is None or f.lean not in without]
-        narrowed = obligation if len(usable) == len(obligation.facts) else _with_facts(obligation, usable)
+        usable = [i for i, f in enumerate(obligation.facts) if f.lean is None or f.lean not in without]
+        narrowed = obligation
+        if len(usable) < len(obligation.facts):
+            narrowed = replace(obligation, facts=tuple(obligation.facts[i] for i in usable))
         reached = self._refute(finding, narrowed, QUICK_TRIES, seed=1)
         if finding.witness is not None or finding.weak is not None:
-            self._residue(finding, usable)
+            self._residue(finding, narrowed)
             return finding
-        attempt = self._prove(obligation, usable, self.seconds if seconds is None else seconds)
-        if attempt.proved is not None:
-            finding.proved = attempt.proved
-            finding.leans = self.leans(obligation, usable, attempt.proved)
-            finding.unreachable = not reached and self.contradictory(tuple(f.formula for f in usable))
+        if self._prove(finding, usable, self.seconds if seconds is None else seconds):
+            finding.unreachable = not reached and self.contradictory(tuple(f.formula for f in narrowed.facts))
             return finding
-        finding.why = attempt.why
-        if attempt.residue is not None:
-            finding.residue = term_of(attempt.residue)
         self._refute(finding, narrowed, THOROUGH_TRIES, seed=2)
         return finding
 
@@ -111,26 +111,43 @@ class Decider:
             finding.witness = trial.broken
         return True
 
-    def _residue(self, finding: Finding, usable: Sequence[Fact]) -> None:
-        search = Search(self.algebra, self.laws, self.functions, seconds=0.2, cancelled=self.cancelled)
-        residue = search.residue([f.formula for f in usable], finding.obligation.goal, finding.obligation.middle)
+    def _residue(self, finding: Finding, narrowed: Obligation) -> None:
+        search = Search(self.algebra, self.laws, self.functions, seconds=FEW_SECONDS, cancelled=self.cancelled)
+        residue = search.residue([f.formula for f in narrowed.facts], narrowed.goal, narrowed.middle)
         if residue is not None:
             finding.residue = term_of(residue)
 
-    def _prove(self, obligation: Obligation, usable: Sequence[Fact], seconds: float) -> Attempt:
+    def _prove(self, finding: Finding, usable: Sequence[int], seconds: float) -> bool:
+        """Looks for a proof, first from the facts that are likely to matter; notes it, or why there is none."""
+        facts = finding.obligation.facts
+        few = [usable[i] for i in relevant([facts[i].formula for i in usable], finding.obligation.goal)]
+        tries = [(few, min(seconds, FEW_SECONDS))] if len(few) < len(usable) else []
+        for chosen, limit in (*tries, (usable, seconds)):
+            attempt = self._attempt(finding.obligation, chosen, limit)
+            if attempt.proved is not None:
+                finding.proved, finding.facts = attempt.proved, tuple(chosen)
+                finding.leans = self._leans(finding)
+                return True
+        finding.why = attempt.why
+        finding.residue = None if attempt.residue is None else term_of(attempt.residue)
+        return False
+
+    def _attempt(self, obligation: Obligation, chosen: Sequence[int], seconds: float) -> Attempt:
         search = Search(self.algebra, self.laws, self.functions, seconds=seconds, cancelled=self.cancelled)
         hints = Hints(
             cases=obligation.cases,
             using=tuple((u.law, u.arguments) for u in obligation.using if u.law in self.laws),
             middle=obligation.middle,
         )
-        return search.prove([f.formula for f in usable], obligation.goal, hints)
+        return search.prove([obligation.facts[i].formula for i in chosen], obligation.goal, hints)
 
-    def leans(self, obligation: Obligation, usable: Sequence[Fact], proved: Proved) -> frozenset[Lean]:
+    def _leans(self, finding: Finding) -> frozenset[Lean]:
         """What the proof rests on: claims behind the facts that it used, side conditions on the path, laws and
         functions.
         """
-        used = [usable[i] for i in sorted(proved.used)]
+        proved, obligation = finding.proved, finding.obligation
+        assert proved is not None
+        used = [obligation.facts[finding.facts[i]] for i in sorted(proved.used)]
         found = {f.lean for f in used if f.lean is not None} | set(obligation.leans)
         found |= {Lean("", name, "") for name in proved.laws}
         found |= self._functions_in([*(f.formula for f in used), obligation.goal], proved.laws)
@@ -144,10 +161,6 @@ class Decider:
             if law is not None:
                 names |= {s.name for t in (law.given, law.formula) for s in subterms(t) if s.op == "call"}
         return {Lean("", f"function {n}", "") for n in names}
-
-
-def _with_facts(obligation: Obligation, facts: Sequence[Fact]) -> Obligation:
-    return replace(obligation, facts=tuple(facts))
 
 
 def definition_of(f: Function) -> Definition:

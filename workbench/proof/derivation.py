@@ -86,14 +86,14 @@ def derivation(
 ) -> Derivation:
     """The derivation of a decided obligation, whatever its verdict."""
     proof = decided.proof
-    used = proof.used if proof is not None else None
+    used = decided.used
     steps = decided.obligation.derive(lambda i: used is None or i in used)
     program = tuple(Line(s.move, s.words, s.before, s.after, span=s.span) for s in steps)
     goal = decided.obligation.goal
     if proof is not None:
         seen = _Seen(*_lean(algebra, laws, functions, decided, proof))
         chain = _chain(algebra, seen)
-        return Derivation(program, tuple(chain or _replayed(algebra, laws, seen)), tuple(sorted(proof.used)))
+        return Derivation(program, tuple(chain or _replayed(algebra, laws, seen)), tuple(sorted(used or ())))
     if decided.witness is not None:
         return Derivation(program, tuple(_refuted(goal, decided, functions)))
     return Derivation(program, tuple(_left_open(goal, decided)))
@@ -112,6 +112,7 @@ def _lean(
 ) -> tuple[Proved, tuple[int, ...]]:
     """The proof found again from the facts that it needs alone: without detours over the others."""
     kept = sorted(proof.used)
+    numbers = tuple(decided.facts[i] + 1 for i in range(len(proof.facts)))
     if len(kept) < len(proof.facts):
         o = decided.obligation
         known = {name: laws[name] for name in functions if name in laws}
@@ -119,8 +120,8 @@ def _lean(
         search = Search(algebra, laws, known, seconds=AGAIN_SECONDS)
         again = search.prove([proof.facts[i] for i in kept], proof.goal, Hints(o.cases, using, o.middle)).proved
         if again is not None:
-            return again, tuple(i + 1 for i in kept)
-    return proof, tuple(range(1, len(proof.facts) + 1))
+            return again, tuple(numbers[i] for i in kept)
+    return proof, numbers
 
 
 # ---------------------------------------------------------------- equations as a chain

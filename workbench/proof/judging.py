@@ -34,7 +34,7 @@ from workbench.proof.search import SECONDS, Stopped
 from workbench.proof.trying import Broken, broken_claims
 
 # For claims that the tool made up itself: most are proved at once or never.
-CANDIDATE_SECONDS = 0.3
+CANDIDATE_SECONDS = 1.0
 
 Key = tuple[str, str, str]  # routine, specification, claim label
 
@@ -250,7 +250,8 @@ class _Judge:
                 if droppable and not droppable <= finding.without:
                     again = self._decide(finding.obligation, finding.without | droppable)
                     if again.proved is not None:
-                        finding.proved, finding.leans, finding.without = again.proved, again.leans, again.without
+                        finding.proved, finding.facts = again.proved, again.facts
+                        finding.leans, finding.without = again.leans, again.without
                         changed = True
             if self._fallen() == fallen and not changed:
                 return
@@ -367,6 +368,7 @@ class _Judge:
             f.residue if verdict != "proved" else None,
             why if verdict == "open" else "",
             f.proved,
+            f.facts,
             leans,
             unreachable=f.unreachable,
         )

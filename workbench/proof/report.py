@@ -25,6 +25,7 @@ class Decided:
 
     `witness`: values (by name; state names at the start of the specification, open constants too) that break it.
     `residue`: what the two sides of an open goal differ by, left minus right. `why`: a sentence for an open one.
+    `facts`: which of the obligation's facts stand as the proof's first, second, … fact.
     `leans_on`: what a proved one rests on that is not proved itself, in words; the obligation's verdict stays `proved`.
     `unreachable`: proved because no values take this path.
     """
@@ -35,8 +36,14 @@ class Decided:
     residue: Term | None = None
     why: str = ""
     proof: Proved | None = None
+    facts: tuple[int, ...] = ()
     leans_on: tuple[str, ...] = ()
     unreachable: bool = False
+
+    @property
+    def used(self) -> frozenset[int] | None:
+        """Indices of the obligation's facts that its proof rests on; None where there is no proof."""
+        return None if self.proof is None else frozenset(self.facts[i] for i in self.proof.used)
 
 
 @dataclass(frozen=True, slots=True)

@@ -209,7 +209,7 @@ def derivation_rows(session: Session, width: int) -> list[Row]:
 
 
 def _fact_rows(d: Decided, width: int) -> Iterator[Row]:
-    used = None if d.proof is None else d.proof.used
+    used = d.used
     for i, fact in enumerate(d.obligation.facts):
         if used is None or i in used:
             yield from rows_of(f"{i + 1}. {show(fact.formula)}   ({fact.origin})", width, "dim", indent=2)
