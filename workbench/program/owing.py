@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 from functools import partial
 
 from workbench.algebra.formulas import show
-from workbench.algebra.terms import Sort, Term, substitute, var
+from workbench.algebra.terms import Sort, Term, app, implies, substitute, var
 from workbench.errors import Span
 from workbench.program import measures, specifying
 from workbench.program.deriving import Needed, program_steps
@@ -116,17 +116,13 @@ class Owing:
                         before,
                     )
             shown = _with_result_primed(formula, before)
-            self._add(
-                "claim",
-                claim.label,
-                end,
-                goal,
-                claim.span,
-                "; ".join(end.case) or "the only path",
-                partial(program_steps, start, end.events, shown, is_claim=True),
-                claim,
-                before,
-            )
+            parts = goal_parts(goal)
+            for number, part in enumerate(parts, 1):
+                case = "; ".join(end.case) or "the only path"
+                if len(parts) > 1:
+                    case += f"; part {number} of {len(parts)}"
+                derive = partial(program_steps, start, end.events, shown, is_claim=True)
+                self._add("claim", claim.label, end, part, claim.span, case, derive, claim, before)
 
     def _add(
         self,
@@ -215,6 +211,31 @@ class Owing:
                 )
             )
         return tuple(found)
+
+
+def goal_parts(goal: Term) -> list[Term]:
+    """Formulas that hold together exactly where the goal does: its conjuncts, and max(a, b) <= c as a <= c and b <=
+    c.
+    """
+    work, parts = [goal], []
+    while work:
+        g = work.pop()
+        op = {">=": "<=", ">": "<"}.get(g.op, g.op)
+        if g.op == "and":
+            work.extend(reversed(g.args))
+        elif g.op == "implies" and len(inner := goal_parts(g.args[1])) > 1:
+            parts += [implies(g.args[0], part) for part in inner]
+        elif op in ("<=", "<"):
+            small, large = g.args if g.op == op else g.args[::-1]
+            if small.op == "max":
+                work.extend(app(op, part, large) for part in reversed(small.args))
+            elif large.op == "min":
+                work.extend(app(op, small, part) for part in reversed(large.args))
+            else:
+                parts.append(g)
+        else:
+            parts.append(g)
+    return parts
 
 
 def _case(p: Path) -> str:

@@ -88,13 +88,20 @@ class Branch:
 
 
 def joined(
-    branches: Sequence[Branch], words: str, span: Span, sight: Container[str], fresh: Callable[[Term], Term]
+    branches: Sequence[Branch],
+    words: str,
+    span: Span,
+    sight: Container[str],
+    fresh: Callable[[Term], Term],
+    levels: Mapping[Term, Term] | None = None,
 ) -> Event:
     """All branches as one event: each name in sight gets `if condition then … else …`, each fact its condition as a
     guard.
 
     The conditions are over the names before the statement; exactly one of them holds. A value that is no mere growth
     of what was there before gets a fresh name and an equation, so that formulas do not double with every branch.
+    `levels`: the level that each peak belongs to; a branch that reaches nothing new has reached the level, which is no
+    more than the peak.
     """
     done = [(b, summary(b.events)) for b in branches]
     names = dict.fromkeys(n for _, path in done for n in path.state if n.name in sight)
@@ -107,6 +114,8 @@ def joined(
             updates[name] = values[0][1]
         elif not name.is_formula and all(g is not None for _, g in growths):
             updates[name] = add(name, _chosen([(c, g) for c, g in growths if g is not None]))
+        elif (reached := _reached(values, name, (levels or {}).get(name))) is not None:
+            updates[name] = app("max", name, reached)
         else:
             updates[name] = new = fresh(name)
             value = _chosen(values)
@@ -125,6 +134,27 @@ def _chosen(values: Sequence[tuple[Term, Term]]) -> Term:
         if value != result:
             result = Term("if", (condition, value, result), sort="bool" if value.is_formula else "real")
     return result
+
+
+def _reached(values: Sequence[tuple[Term, Term]], peak: Term, level: Term | None) -> Term | None:
+    """level + e, with `if` values for e, where every branch makes the peak the maximum of itself and of such levels."""
+    if level is None:
+        return None
+    heights: list[tuple[Term, Term]] = []
+    for condition, value in values:
+        height = ZERO
+        work = [value]
+        while work:
+            t = work.pop()
+            if t.op == "max":
+                work.extend(t.args)
+            elif t != peak:
+                grown = _growth(t, level)
+                if grown is None:
+                    return None
+                height = grown if height == ZERO else app("max", height, grown)
+        heights.append((condition, height))
+    return add(level, _chosen(heights))
 
 
 def _growth(value: Term, name: Term) -> Term | None:

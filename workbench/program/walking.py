@@ -270,7 +270,8 @@ class Walk:
             branches.append(Branch(condition, case, end.events[len(inside.events) :]))
         state = self.names.next_state()
         words = f"the branches together, {ways[0][2]} or not; the state after them is @{state}"
-        return p.then(joined(branches, words, span, sight, lambda n: var(f"{n.name}@{state}", n.sort)))
+        levels = {self.names.present(f"{g}.peak"): self.names.present(g) for g in self.program.gauges}
+        return p.then(joined(branches, words, span, sight, lambda n: var(f"{n.name}@{state}", n.sort), levels))
 
     # -------------------------------------------------------------- loops and stages
     def _loop(self, s: Loop, paths: list[Path]) -> list[Path]:
