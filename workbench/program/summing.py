@@ -21,6 +21,7 @@ from workbench.algebra.polynomial import (
     TooLargeToNormalize,
     constant,
     minus,
+    of_atom,
     plus,
     scaled,
     times,
@@ -133,7 +134,7 @@ class _Summing:
         reached = [r for p in self.bodies if (r := p.reached(level, peak)) is not None]
         if net is None or len(reached) != len(self.bodies):
             return []
-        exact = all(r.exact == reached[0].exact for r in reached) and reached[0].exact is not None
+        exact = reached[0].exact is not None and all(r.exact == reached[0].exact for r in reached)
         highest = self._extreme([r.high for r in reached], up=True)
         if highest is None:
             return []
@@ -304,13 +305,19 @@ class _Solved:
             f = work.pop()
             if f.op == "and":
                 work.extend(f.args)
+            elif f.op in ("<", ">"):
+                self._learn_order(f)
             elif f.op in ("=", "<=", ">="):
                 if f.op != "=":
-                    small, large = f.args if f.op == "<=" else f.args[::-1]
-                    self.not_negative.append(minus(self.algebra.normal(large), self.algebra.normal(small)))
+                    self._learn_order(f)
                 for here, there, op in ((f.args[0], f.args[1], f.op), (f.args[1], f.args[0], _turned(f.op))):
                     if here.op == "var" and "@" in here.name and here.name not in names(there):
                         self._note(self.algebra.variable_atom(here.name, here.sort), there, op)
+
+    def _learn_order(self, f: Term) -> None:
+        small, large = f.args if f.op in ("<=", "<") else f.args[::-1]
+        gap = minus(self.algebra.normal(large), self.algebra.normal(small))
+        self.not_negative.append(minus(gap, UNITY) if f.op in ("<", ">") and gap.is_integer else gap)
 
     def _learn_under_condition(self, formula: Term) -> None:
         """What an implication says, where the facts decide its condition at sight."""
@@ -334,42 +341,59 @@ class _Solved:
         return minus(self.growth(area), times(self.algebra.normal(level), self.growth(time)))
 
     def reached(self, level: Term, peak: Term) -> Cost | None:
-        """How far above the starting level the path gets, where that is a greatest one."""
-        heights: list[Term] = []
-        exact = True
-        work = [self.path.value(peak)]
-        for _ in range(ROUND_LIMIT):
-            if not work:
-                break
-            t = work.pop()
-            if t.op == "max":
-                work.extend(t.args)
-            elif t.op == "var" and "@" in t.name:
-                atom = self.algebra.variable_atom(t.name, t.sort)
-                bounds = [b for b in self.above.get(atom, []) if b != t]
-                if atom in self.equal:
-                    work.append(self.equal[atom])
-                elif bounds:
-                    exact = False
-                    work.append(bounds[0])
-                else:
-                    return None
-            elif t != peak:
-                heights.append(t)
-        best: Poly | None = None
-        for h in heights:
-            p = self.resolved(minus(self.algebra.normal(h), self.algebra.normal(level)), up=True)
-            q = self.resolved(minus(self.algebra.normal(h), self.algebra.normal(level)), up=False)
-            if p is None:
-                return None
-            exact = exact and p == q
-            if best is None or minus(p, best).nonneg:
-                best = p
-            elif not minus(best, p).nonneg:
-                best = plus(best, self.algebra.pos(minus(p, best)))
-        if best is None:
+        """How far above the starting level the path gets; None where no bound of it is known."""
+        found = self._height(self.path.value(peak), level, peak, ROUND_LIMIT)
+        if found is None:
             return None
-        return Cost(best if exact else None, best)
+        return Cost(found.low or NOTHING, found.high) if found.high is not None else None
+
+    def _height(self, t: Term, level: Term, peak: Term, rounds: int) -> Cost | None:
+        """Bounds of how far the value of a peak lies above the level; both None where it is the peak at the start."""
+        if t == peak:
+            return Cost(None, NOTHING)
+        if not rounds:
+            return None
+        if t.op == "max":
+            a, b = (self._height(x, level, peak, rounds - 1) for x in t.args)
+            return None if a is None or b is None else self._higher(a, b)
+        if t.op == "if":
+            a, b = (self._height(x, level, peak, rounds - 1) for x in t.args[1:])
+            condition = self._settled(self.algebra.normal(t.args[0]))
+            if a is None or b is None or any(self._strange(x) for x in condition.deep if x.kind in ("var", "truth")):
+                return None
+            return Cost(
+                self._either_one(condition, a.low, b.low), self._either_one(condition, a.high, b.high) or NOTHING
+            )
+        atom = self.algebra.variable_atom(t.name, t.sort) if t.op == "var" and "@" in t.name else None
+        if atom is not None and atom in self.equal:
+            return self._height(self.equal[atom], level, peak, rounds - 1)
+        if atom is not None:
+            bounds = [b for b in self.above.get(atom, []) if b != t]
+            bounded = self._height(bounds[0], level, peak, rounds - 1) if bounds else None
+            return None if bounded is None else Cost(None, bounded.high)
+        above = minus(self.algebra.normal(t), self.algebra.normal(level))
+        high = self.resolved(above, up=True)
+        return None if high is None else Cost(self.resolved(above, up=False), high)
+
+    def _higher(self, a: Cost, b: Cost) -> Cost:
+        """Of the maximum of two; what was there at the start counts for nothing beside a level that is reached."""
+        lows = [x for x in (a.low, b.low) if x is not None]
+        low = lows[0] if lows else None
+        if len(lows) == 2:
+            low = self._greater(lows[0], lows[1])
+        if a.high is None or b.high is None:
+            return Cost(low, None)
+        return Cost(low, self._greater(a.high, b.high))
+
+    def _greater(self, p: Poly, q: Poly) -> Poly:
+        difference = minus(p, q)
+        return self._settled(plus(q, self.algebra.pos(difference)))
+
+    def _either_one(self, condition: Poly, yes: Poly | None, no: Poly | None) -> Poly | None:
+        if yes is None and no is None:
+            return None
+        yes, no = yes or NOTHING, no or NOTHING
+        return plus(no, times(condition, minus(yes, no)))
 
     def resolved(self, poly: Poly, *, up: bool) -> Poly | None:
         """The expression over names that the loop cannot change and its variable: an upper or lower bound of it."""
@@ -394,9 +418,14 @@ class _Solved:
             inner = atom.parts[0] if atom.kind in ("ind", "pos") else None
             if inner is None or atom.data == ("eq",) or atom.data == ("gt",):
                 continue
-            if any(minus(inner, f).nonneg for f in self.not_negative):
+            if self._plainly_not_negative(inner):
                 known[atom] = inner if atom.kind == "pos" else UNITY
         return self.algebra.rewrite(poly, known) if known else poly
+
+    def _plainly_not_negative(self, p: Poly) -> bool:
+        """No less than a fact, or than a fact times something that is never negative."""
+        factors = [UNITY, *(of_atom(a) for a in sorted(p.atoms) if a.nonneg)]
+        return any(minus(p, times(x, f)).nonneg for f in self.not_negative for x in factors)
 
     def _bounded(self, poly: Poly, strangers: Sequence[Atom], *, up: bool) -> Poly | None:
         for atom in strangers:

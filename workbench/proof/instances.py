@@ -18,6 +18,8 @@ from workbench.proof.laws import Law
 
 # Pairs of atoms that one stage relates by a law of two arguments.
 PAIR_LIMIT = 24
+# Sums of up to one term more than this are written out.
+WRITTEN_OUT = 8
 # Antidifferences are looked for up to this degree.
 DEGREE_LIMIT = 8
 
@@ -90,11 +92,11 @@ def _power_steps(atom: Atom) -> Iterator[Move]:
 def _halves(atom: Atom) -> Iterator[Move]:
     """lg of x/2, floor(x/2), 2x and 2x + 1 from lg x."""
     inner = atom.parts[0]
-    lone = next(iter(inner.atoms)) if len(inner.terms) == 1 else None
-    if lone is not None and lone.kind == "floor" and inner == of_atom(lone):
-        doubled = scaled(lone.parts[0], 2)
-        if doubled.is_integer:
-            yield Instance("lg of a whole half", (doubled,))
+    for atom_inside in sorted(inner.atoms):
+        if atom_inside.kind == "floor" and inner.terms.get(((atom_inside, 1),)) == 1:
+            doubled = scaled(plus(minus(inner, of_atom(atom_inside)), atom_inside.parts[0]), 2)
+            if doubled.is_integer:
+                yield Instance("lg of a whole half", (doubled,))
     below = [c for c in inner.terms.values() if isinstance(c, Fraction)]
     if below and scaled(inner, 2).is_integer:
         yield Instance("lg of half", (scaled(inner, 2),))
@@ -107,6 +109,9 @@ def _halves(atom: Atom) -> Iterator[Move]:
 
 
 def _closed_sum(state: State, atom: Atom) -> Iterator[Move]:
+    length = minus(atom.parts[1], atom.parts[0]).constant
+    if isinstance(length, int) and 0 <= length <= WRITTEN_OUT:
+        yield SumLaw("last", atom)
     found = antidifference(state, atom)
     if found is not None:
         yield SumLaw("closed", atom, found)

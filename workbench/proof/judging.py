@@ -326,6 +326,8 @@ class _Judge:
         return found - {name}
 
     def _inferred(self, lean: Lean) -> bool:
+        if not lean.routine:
+            return False
         spec = self.routines[lean.routine].owed.specifications.get(lean.specification)
         return spec is not None and any(c.inferred and c.label == lean.claim for c in spec.claims)
 

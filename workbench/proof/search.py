@@ -35,7 +35,7 @@ from workbench.proof.kernel import (
 from workbench.proof.laws import Law
 from workbench.proof.leaves import product_leaf
 from workbench.proof.line import Effort, Line, Stopped
-from workbench.proof.splitting import remainders, row_splits, undecided, zeros
+from workbench.proof.splitting import decide_first, remainders, row_splits, undecided, zeros
 from workbench.proof.tidying import ROUND_LIMIT, equals_for_equals, tidy
 
 __all__ = ["SECONDS", "Attempt", "Hints", "Search", "Stopped"]
@@ -101,6 +101,7 @@ class Search:
             line = self._line(facts, goal, hints.middle)
             equals_for_equals(line)
             residue = _residue(line, goal)
+            decide_first(line)
             for name, args in hints.using:
                 line.use(Instance(name, tuple(self.algebra.normal(a) for a in args)), keep=True)
             certificate = self._with_cases(line, hints.cases)

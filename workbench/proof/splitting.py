@@ -6,10 +6,13 @@ from collections.abc import Iterable
 
 from workbench.algebra.polynomial import Atom, Poly, denominator, of_atom, scaled
 from workbench.proof import instances
+from workbench.proof.kernel import OpenPositivePart
 from workbench.proof.line import Line
 
 # Divisors up to this are split by remainder.
 DIVISOR_LIMIT = 8
+# Conditions that are asked of the facts before anything else; each takes about a millisecond.
+DECIDED_FIRST_LIMIT = 8
 
 
 def row_splits(line: Line) -> list[Atom]:
@@ -31,6 +34,35 @@ def row_splits(line: Line) -> list[Atom]:
             for atom in sorted(known.poly.atoms, key=_size):
                 found[atom] = None
     return [a for a in found if a not in line.state.images]
+
+
+def decide_first(line: Line) -> None:
+    """Conditions and signs in the goal that the facts decide as they stand: each one decided is a case less to tell
+    apart.
+    """
+    tried: set[Atom] = set()
+    while len(tried) < DECIDED_FIRST_LIMIT:
+        atom = next((a for a in (*_in_failed_equations(line), *row_splits(line)) if a not in tried), None)
+        if atom is None:
+            return
+        tried.add(atom)
+        if atom.kind != "pos":
+            line.decide(atom)
+            continue
+        inner = line.effort.algebra.rewrite(
+            line.effort.algebra.compare(atom.parts[0], strict=False), line.state.images
+        )
+        if all(line.decide(sign) for sign in sorted(inner.atoms) if sign.idempotent):
+            line.attempt(OpenPositivePart(atom))
+
+
+def _in_failed_equations(line: Line) -> Iterable[Atom]:
+    """Conditions and signs inside what is said not to be equal, a goal's two sides above all."""
+    for atom, image in line.state.images.items():
+        if atom.kind == "ind" and atom.data == ("eq",) and not image.terms:
+            for inside in sorted(atom.parts[0].deep, key=_size):
+                if (inside.idempotent or inside.kind == "pos") and inside not in line.state.images and not inside.loose:
+                    yield inside
 
 
 def undecided(line: Line) -> Iterable[Atom]:
