@@ -60,6 +60,11 @@ class Terminal:
             os.write(self.master, KEYS.get(key, key).encode())
             self.read(0.15)
 
+    def __del__(self) -> None:
+        if self.child.poll() is None:
+            self.child.kill()
+            self.child.wait()
+
     def close(self) -> int:
         end = time.monotonic() + PATIENCE
         while self.child.poll() is None and time.monotonic() < end:
@@ -98,6 +103,27 @@ def test_a_claim_is_broken_read_stepped_mended_saved_and_opened_again(tmp_path: 
     again.until("3*samples + 0")
     again.until("verified")
     again.press("q")
+    assert again.close() == 0
+
+
+def test_a_terminal_that_goes_away_ends_the_program_and_keeps_the_text(tmp_path: Path) -> None:
+    sheet = tmp_path / "first.ullage"
+    sheet.write_bytes((ROOT / "specs" / "01-first-look.ullage").read_bytes())
+    terminal = Terminal([str(sheet)], 80, 24, tmp_path)
+    terminal.until("verified")
+    terminal.press("enter")
+    terminal.until("Enter proves it")
+    terminal.press(" ", "+", " ", "1", "enter")
+    terminal.until("! refuted")
+    os.close(terminal.master)
+    assert terminal.child.wait(PATIENCE) == 129
+    again = Terminal([str(sheet)], 80, 24, tmp_path)
+    again.until("take it up again")
+    again.press("y")
+    again.until("! refuted")
+    again.press("q")
+    again.until("not saved")
+    again.press("d")
     assert again.close() == 0
 
 

@@ -22,6 +22,7 @@ from workbench.proof.search import Stopped
 from workbench.screens import content
 from workbench.screens.actions import ACTIONS, key_line
 from workbench.screens.dialogs import HelpDialog, Question, TextDialog
+from workbench.screens.hangup import aside, put_text_aside, watch
 from workbench.screens.looks import PLAIN, Looks, read_looks
 from workbench.screens.rows import Rows
 from workbench.screens.saving import ChangedOnDisk, NotSaved
@@ -94,6 +95,7 @@ class Workbench(App[int]):
         self._arrange()
         self.query_one("#specification", Rows).focus()
         self.prove()
+        self._offer_unsaved()
 
     def on_resize(self, event: events.Resize) -> None:
         self._arrange()
@@ -187,6 +189,22 @@ class Workbench(App[int]):
         if self.session.take_report(version, report):  # type: ignore[arg-type]
             self.say(f"{self.session.report.verdict}" if self.session.report is not None else "")
             self.refill()
+
+    def _offer_unsaved(self) -> None:
+        """A text that could not be saved when the terminal went away."""
+        place = aside(self.session.disk.path)
+        if not place.exists():
+            return
+
+        def answered(key: str | None) -> None:
+            if key == "y":
+                self.session.set_text(place.read_text(encoding="utf-8"))
+                self._changed("the unsaved text; u brings the file's back")
+            if key is not None:
+                place.unlink(missing_ok=True)
+
+        question = "The terminal went away with a text that was not saved."
+        self.push_screen(Question(question, {"y": "take it up again", "d": "drop it"}), answered)
 
     # -------------------------------------------------------------- moving about
     def on_rows_resized(self, message: Rows.Resized) -> None:
@@ -407,6 +425,7 @@ def main(path: str | None, *, plain: bool = False) -> int:
         raise UsageError(f"{chosen!a} cannot be read: {e.strerror}") from None
     sys.setswitchinterval(TURN)
     app = Workbench(session, looks(plain=plain))
+    watch(lambda: put_text_aside(session.disk.path, session.text) if session.changed else None)
     return int(app.run(mouse=False) or Exit.OK)
 
 
