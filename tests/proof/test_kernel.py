@@ -11,7 +11,7 @@ import pytest
 from tests.proof.test_laws import total
 from workbench.algebra.normal import Algebra
 from workbench.algebra.polynomial import UNITY, Poly, constant, minus, of_atom, plus, scaled
-from workbench.algebra.terms import FALSE, TRUE, Term, app, call, num, summation, var
+from workbench.algebra.terms import FALSE, TRUE, Rational, Term, app, call, num, summation, var
 from workbench.proof.kernel import (
     ByRemainder,
     Cut,
@@ -242,7 +242,7 @@ def numbers(rng: random.Random, depth: int) -> Term:
     return app(op, numbers(rng, depth - 1), numbers(rng, depth - 1))
 
 
-GRID = [
+GRID: list[dict[str, Rational]] = [
     {"n": n, "m": m, "x": x, "y": y, "p": p}
     for n, m, x, y, p in product((0, 1, 2, 5), (-2, 0, 1, 3), (0, Fraction(-3, 2), 2), (1, Fraction(1, 2), -1), (0, 1))
 ]

@@ -71,7 +71,7 @@ def total(t: Term, values: Mapping[str, Rational]) -> Rational:
         case "min":
             return min(a)
         case "abs":
-            return abs(a[0])
+            return max(a[0], -a[0])
         case "=" | "iff":
             return int(a[0] == a[1])
         case "!=":

@@ -261,6 +261,13 @@ def _law_line(law: Law, arguments: Sequence[Term], depth: int) -> Line:
 
 def _added_up(state: State, leaf: Leaf, depth: int, seen: _Seen) -> Iterator[Line]:
     """Which rows, how often, add up to what cannot be."""
+    if len(leaf.items) == 1:
+        item = leaf.items[0]
+        refs = (item.equation,) if isinstance(item, EquationItem) else item.factors
+        if len(refs) == 1 and (row := _row(state, refs[0])).poly.constant is not None:
+            what = f"contradicts {_facts(row, seen)}" if row.deps else "cannot be"
+            yield Line("finish", f"what is supposed {what}", depth=depth)
+            return
     total, strict = Poly({}), False
     for item in leaf.items:
         if isinstance(item, EquationItem):
