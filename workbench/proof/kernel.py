@@ -8,9 +8,10 @@ something absurd. The search may try what it likes: only what `check` replays co
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
+from fractions import Fraction
 
 from workbench.algebra.normal import Algebra
-from workbench.algebra.polynomial import NOTHING, TooLargeToNormalize, constant, plus, times
+from workbench.algebra.polynomial import NOTHING, TooLargeToNormalize, constant, of_atom, plus
 from workbench.algebra.terms import Term, app
 from workbench.proof.kernel_certificates import (
     ByRemainder,
@@ -184,19 +185,19 @@ def _contradiction(state: State, leaf: Leaf) -> Dependencies:
     for item in leaf.items:
         if isinstance(item, EquationItem):
             row = _row(state, item.equation)
-            if row.relation != "=" or item.multiplier.loose:
+            if row.relation != "=":
                 raise NotProved("only an equation may be multiplied by anything")
-            sum_ = plus(sum_, times(item.multiplier, row.poly))
-            used |= row.deps
+            sum_ = plus(sum_, state.algebra.times(item.multiplier, row.poly))
+            used |= row.deps | state.admitted(item.multiplier)
             continue
-        if item.coefficient <= 0:
+        if not isinstance(item.coefficient, int | Fraction) or item.coefficient <= 0:
             raise NotProved("a fact must be taken a positive number of times")
         product, all_strict = constant(item.coefficient), True
         for ref in item.factors:
             row = _row(state, ref)
             if row.relation == "=":
                 raise NotProved("an equation among the inequalities")
-            product = times(product, row.poly)
+            product = state.algebra.times(product, row.poly)
             all_strict = all_strict and row.relation == ">"
             used |= row.deps
         sum_ = plus(sum_, product)
@@ -209,9 +210,9 @@ def _contradiction(state: State, leaf: Leaf) -> Dependencies:
 
 def _row(state: State, ref: RowRef) -> Row:
     if isinstance(ref, FromAtom):
-        if ref.atom.loose:
-            raise NotProved("a bound variable outside its sum")
-        return atom_row(state.algebra, ref.atom, ref.which)
+        deps = state.admitted(of_atom(ref.atom))
+        row = atom_row(state.algebra, ref.atom, ref.which)
+        return Row(row.poly, row.relation, deps)
     if ref not in state.rows:
         raise NotProved("no such row")
     return state.rows[ref]

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from workbench.algebra.normal import Algebra
-from workbench.algebra.polynomial import NOTHING, UNITY, Atom, Poly, minus, of_atom, plus, scaled, times
+from workbench.algebra.polynomial import NOTHING, UNITY, Atom, Poly, minus, of_atom, plus, scaled
 from workbench.algebra.terms import Term
 from workbench.proof.kernel_facts import NotProved
 from workbench.proof.laws import Law
@@ -25,11 +25,11 @@ def law_instance(algebra: Algebra, law: Law, args: Sequence[Poly]) -> Poly:
         if parameter.sort == "bool" and not _is_indicator(arg):
             raise NotProved(f"the law '{law.name}' needs a truth value for {parameter.name}")
         if parameter.sort == "nat":
-            guard = times(guard, algebra.compare(arg, strict=False))
+            guard = algebra.times(guard, algebra.compare(arg, strict=False))
         values[parameter] = arg
-    guard = times(guard, algebra.normal(law.given, values))
+    guard = algebra.times(guard, algebra.normal(law.given, values))
     formula = algebra.normal(law.formula, values)
-    return plus(minus(UNITY, guard), times(guard, formula))
+    return plus(minus(UNITY, guard), algebra.times(guard, formula))
 
 
 def _is_indicator(p: Poly) -> bool:
@@ -47,7 +47,7 @@ def sum_instance(algebra: Algebra, kind: str, atom: Atom, antidifference: Poly |
     closed: if F(i) - F(i - 1) = f(i) for all i and b >= a - 1, the sum is F(b) - F(a - 1).
     empty:  b < a gives 0.   first / last: a <= b splits off f(a) / f(b).
     """
-    if atom.kind != "sum" or atom.loose:
+    if atom.kind != "sum":
         raise NotProved("not a sum")
     low, high, body = atom.parts
     if not (low.is_integer and high.is_integer):
@@ -56,10 +56,10 @@ def sum_instance(algebra: Algebra, kind: str, atom: Atom, antidifference: Poly |
     me, length = of_atom(atom), minus(high, low)
 
     def at(p: Poly, value: Poly) -> Poly:
-        return _instantiated(algebra, p, bound, value)
+        return algebra.instantiated(p, bound, value)
 
     if kind == "closed":
-        if antidifference is None or not antidifference.loose <= {str(atom.data[0])}:
+        if antidifference is None:
             raise NotProved("a closed form needs an antidifference")
         step = minus(antidifference, at(antidifference, minus(of_atom(bound), UNITY)))
         if minus(step, body).terms:
@@ -77,13 +77,4 @@ def sum_instance(algebra: Algebra, kind: str, atom: Atom, antidifference: Poly |
             value = plus(at(body, high), algebra.sum(str(atom.data[0]), low, minus(high, UNITY), body))
         else:
             raise NotProved(f"no such law of sums: {kind}")
-    return plus(minus(UNITY, guard), times(guard, algebra.equal(minus(me, value))))
-
-
-def _instantiated(algebra: Algebra, p: Poly, bound: Atom, value: Poly) -> Poly:
-    """p with the bound variable replaced; the value may contain that variable itself (a simultaneous replacement)."""
-    if bound not in value.deep:
-        return algebra.rewrite(p, {bound: value})
-    stand_in = algebra.bound_atom("#shifted")
-    moved = algebra.rewrite(p, {bound: of_atom(stand_in)})
-    return algebra.rewrite(moved, {stand_in: value})
+    return plus(minus(UNITY, guard), algebra.times(guard, algebra.equal(minus(me, value))))

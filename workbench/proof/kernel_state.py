@@ -153,7 +153,10 @@ class State:
         others = {k: v for k, v in self.images.items() if k != a}
         poly = self.algebra.rewrite(of_atom(a), others, None, used)
         deps = self.rests[a].union(*(self.rests[u] for u in used))
-        return Known(self.algebra.equal(minus(poly, self.images[a])), deps)
+        image = self.images[a]
+        if a.idempotent and image.constant is not None:
+            return Known(poly if image.terms else minus(UNITY, poly), deps)
+        return Known(self.algebra.equal(minus(poly, image)), deps)
 
     # ---------------------------------------------------------- moves: each returns a new state
     def assume(self, atom: Atom, holds: bool) -> State:
@@ -267,7 +270,7 @@ class State:
     def sum_law(self, kind: str, atom: Atom, antidifference: Poly | None) -> State:
         """A law of finite sums. Only the antidifference may speak of the variable that the sum binds."""
         deps = self.admitted(of_atom(atom))
-        if antidifference is not None:
+        if antidifference is not None and atom.kind == "sum":
             deps |= self.admitted(antidifference, bound=frozenset(map(str, atom.data)))
         return self._knowing(Known(sum_instance(self.algebra, kind, atom, antidifference), deps))
 
