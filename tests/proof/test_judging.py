@@ -74,7 +74,8 @@ def test_recursion_without_a_falling_measure_proves_nothing() -> None:
 
 def test_a_measure_is_found_among_sums_and_differences() -> None:
     report = judged(
-        "routine meet(a: nat, b: nat)\n  claim c: spent time <= a + b\nis\n  if a > 0 and b > 0 then\n    spend 1 time\n"
+        "routine meet(a: nat, b: nat)\n  claim c: spent time <= a + b\nis\n"
+        "  if a > 0 and b > 0 then\n    spend 1 time\n"
         "    either meet(a - 1, b) else meet(a, b - 1) end\n  end\nend\n"
         "routine near(n: nat)\n  claim c: spent time = n\nis\n  var i: nat := 0\n  while i < n\n    given i <= n\n"
         "    claim rest: spent time = n - i\n  do\n    i := i + 1\n    spend 1 time\n  end\nend\n"

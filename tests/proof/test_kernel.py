@@ -242,9 +242,10 @@ def numbers(rng: random.Random, depth: int) -> Term:
     return app(op, numbers(rng, depth - 1), numbers(rng, depth - 1))
 
 
+HALVES: tuple[tuple[Rational, ...], tuple[Rational, ...]] = ((0, Fraction(-3, 2), 2), (1, Fraction(1, 2), -1))
 GRID: list[dict[str, Rational]] = [
     {"n": n, "m": m, "x": x, "y": y, "p": p}
-    for n, m, x, y, p in product((0, 1, 2, 5), (-2, 0, 1, 3), (0, Fraction(-3, 2), 2), (1, Fraction(1, 2), -1), (0, 1))
+    for n, m, x, y, p in product((0, 1, 2, 5), (-2, 0, 1, 3), *HALVES, (0, 1))
 ]
 
 
