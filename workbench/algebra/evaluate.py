@@ -56,6 +56,21 @@ def compile_term(term: Term, functions: Mapping[str, Definition] | None = None) 
     return _Compiler(functions or {}).function(term)
 
 
+class Evaluator:
+    """Compiles each term once: obligations of one program share most of their facts."""
+
+    def __init__(self, functions: Mapping[str, Definition]) -> None:
+        self.functions = functions
+        self._known: dict[Term, Compiled] = {}
+
+    def compiled(self, term: Term) -> Compiled:
+        """As `compile_term`."""
+        found = self._known.get(term)
+        if found is None:
+            found = self._known[term] = compile_term(term, self.functions)
+        return found
+
+
 class _Compiler:
     """Writes Python source: one local name for each shared part, so that its size is that of the term as a graph."""
 

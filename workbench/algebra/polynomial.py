@@ -70,17 +70,10 @@ class Atom:
         self.depth = 1 + max((p.depth for p in parts), default=0)
         if self.depth > NESTING_LIMIT or len(self.key) > KEY_LIMIT:
             raise TooLargeToNormalize("an expression nested too deeply")
-        self._hash = hash(self.key)
         self.deep: frozenset[Atom] = frozenset((self,)).union(*(p.deep for p in parts))
         self.loose: frozenset[str] = _loose(self)
         self.newest: int = _newest(self)
         self.inverted: frozenset[Atom] = frozenset().union(*(p.inverted for p in parts))
-
-    def __hash__(self) -> int:
-        return self._hash
-
-    def __eq__(self, other: object) -> bool:
-        return self is other or (isinstance(other, Atom) and self.key == other.key)
 
     def __lt__(self, other: Atom) -> bool:
         return self.key < other.key

@@ -412,7 +412,8 @@ class Walk:
 
 def _same(value: Term, name: Term) -> bool:
     """What a hold took and gave back leaves the level as it was."""
-    return value == name or Algebra().normal(value) == Algebra().normal(name)
+    algebra = Algebra()
+    return value == name or algebra.normal(value) == algebra.normal(name)
 
 
 def _count(block: Block) -> int:

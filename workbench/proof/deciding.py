@@ -8,7 +8,7 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 from workbench.algebra.denormal import term_of
-from workbench.algebra.evaluate import Definition
+from workbench.algebra.evaluate import Definition, Evaluator
 from workbench.algebra.normal import Algebra
 from workbench.algebra.terms import FALSE, Rational, Term, app, subterms, var
 from workbench.program.mathematics import law_condition
@@ -56,6 +56,7 @@ class Decider:
         self.seconds = seconds
         self.cancelled = cancelled
         self.definitions = {f.name: definition_of(f) for f in program.functions.values()}
+        self.evaluator = Evaluator(self.definitions)
         self.laws: dict[str, Law] = {law.name: law for law in lawbook.built_in_laws()}
         self.functions: dict[str, Law] = {}
         self._contradictory: dict[tuple[Term, ...], bool] = {}
@@ -92,7 +93,7 @@ class Decider:
     def contradictory(self, facts: tuple[Term, ...]) -> bool:
         """Whether no values satisfy the facts, as far as a short search can tell."""
         if facts not in self._contradictory:
-            sampler = Sampler(facts, [], self.definitions)
+            sampler = Sampler(facts, [], self.evaluator)
             reached = next(iter(sampler.draw(QUICK_TRIES)), None) is not None
             search = Search(
                 self.algebra, self.laws, self.functions, seconds=CONTRADICTION_SECONDS, cancelled=self.cancelled
@@ -102,7 +103,7 @@ class Decider:
 
     def _refute(self, finding: Finding, narrowed: Obligation, tries: int, seed: int) -> bool:
         """Notes values that break the obligation; returns whether any values reach it."""
-        trial = tried(narrowed, self.definitions, tries, seed)
+        trial = tried(narrowed, self.evaluator, tries, seed)
         if trial.broken is None or narrowed.kind == "choice":
             return trial.reached  # that a few candidates fail does not mean that no value is there
         if narrowed.middle or finding.without:

@@ -213,7 +213,7 @@ class _Judge:
 
     # -------------------------------------------------------------- routines
     def _decide_routine(self, r: _Routine) -> None:
-        r.broken = broken_claims(self.program, r.owed, self.decider.definitions)
+        r.broken = broken_claims(self.program, r.owed, self.decider.evaluator)
         gone = frozenset(Lean(*key) for key in r.broken)
         for key in _claim_keys(r.owed):
             r.claims[key] = []

@@ -7,11 +7,10 @@ itself.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
-from workbench.algebra.evaluate import Definition, TooLarge, Undefined, compile_term
+from workbench.algebra.evaluate import Evaluator, TooLarge, Undefined
 from workbench.program.obligation import Obligation
 from workbench.proof.sampling import Sampler, Values
 
@@ -30,12 +29,12 @@ class Trial:
     reached: bool
 
 
-def tried(obligation: Obligation, functions: Mapping[str, Definition], tries: int, seed: int = 1) -> Trial:
+def tried(obligation: Obligation, evaluator: Evaluator, tries: int, seed: int = 1) -> Trial:
     """Small values and edges, by exact evaluation."""
     facts = [f.formula for f in obligation.facts]
     try:
-        goal = compile_term(obligation.goal, functions)
-        sampler = Sampler(facts, [obligation.goal], functions, seed)
+        goal = evaluator.compiled(obligation.goal)
+        sampler = Sampler(facts, [obligation.goal], evaluator, seed)
     except TooLarge:
         return Trial(None, True)  # too long to evaluate: nothing is known
     reached = False

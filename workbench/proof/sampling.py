@@ -9,7 +9,7 @@ from collections.abc import Callable, Iterator, Mapping, Sequence
 from fractions import Fraction
 from math import ceil, floor
 
-from workbench.algebra.evaluate import Definition, TooLarge, Undefined, compile_term
+from workbench.algebra.evaluate import Evaluator, TooLarge, Undefined
 from workbench.algebra.terms import Rational, Term, variables
 
 Value = Rational | bool
@@ -30,14 +30,14 @@ class Sampler:
     """Draws values for the free names of some facts and of whatever else is asked for. Deterministic for a seed."""
 
     def __init__(
-        self, facts: Sequence[Term], also: Sequence[Term], functions: Mapping[str, Definition], seed: int = 1
+        self, facts: Sequence[Term], also: Sequence[Term], evaluator: Evaluator, seed: int = 1
     ) -> None:
         self._random = random.Random(seed)
-        self._facts = [(variables(f), compile_term(f, functions)) for f in facts]
+        self._facts = [(variables(f), evaluator.compiled(f)) for f in facts]
         names: dict[Term, None] = {}
         for t in (*facts, *also):
             names.update(dict.fromkeys(sorted(variables(t), key=lambda v: v.name)))
-        self._plan = _plan(list(names), facts, functions)
+        self._plan = _plan(list(names), facts, evaluator)
         self._checks = _checks(self._plan, self._facts)
         self._closed = [check for names_, check in self._facts if not names_]
 
@@ -121,7 +121,7 @@ def _as_sort(value: Value, sort: str) -> Value | None:
 
 
 def _plan(
-    names: Sequence[Term], facts: Sequence[Term], functions: Mapping[str, Definition]
+    names: Sequence[Term], facts: Sequence[Term], evaluator: Evaluator
 ) -> list[tuple[Term, _Choice]]:
     """Names in an order in which equations and bounds speak of earlier ones only, as far as that can be had."""
     sides = [s for f in facts for s in _sides(f)]
@@ -139,7 +139,7 @@ def _plan(
         for name, op, other in sides:
             if name != pick or not variables(other) <= placed:
                 continue
-            compiled = compile_term(other, functions)
+            compiled = evaluator.compiled(other)
             if op == "=" and choice.equal is None:
                 choice.equal = compiled
             elif op in ("<", "<="):

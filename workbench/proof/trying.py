@@ -7,7 +7,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
-from workbench.algebra.evaluate import Compiled, Definition, TooLarge, Undefined, compile_term
+from workbench.algebra.evaluate import Compiled, Evaluator, TooLarge, Undefined
 from workbench.algebra.terms import Rational, var
 from workbench.errors import UllageError
 from workbench.program.choosing import RandomChooser
@@ -36,20 +36,20 @@ class Broken:
     end: Values
 
 
-def broken_claims(program: Program, owed: Owed, definitions: Mapping[str, Definition]) -> dict[Key, Broken]:
+def broken_claims(program: Program, owed: Owed, evaluator: Evaluator) -> dict[Key, Broken]:
     """Claims of the routine, its loops and stages that some run breaks, with small values that do."""
-    return _Trials(program, owed, definitions).broken()
+    return _Trials(program, owed, evaluator).broken()
 
 
 class _Trials:
     """Runs of one routine and its claims as tests."""
 
-    def __init__(self, program: Program, owed: Owed, definitions: Mapping[str, Definition]) -> None:
+    def __init__(self, program: Program, owed: Owed, evaluator: Evaluator) -> None:
         self.owed = owed
         self.name = owed.routine.name
         self.machine = Machine(program)
         self.tests: dict[str, list[tuple[Claim, Compiled]]] = {
-            label: [(c, compile_term(c.formula, definitions)) for c in spec.claims]
+            label: [(c, evaluator.compiled(c.formula)) for c in spec.claims]
             for label, spec in owed.specifications.items()
         }
         self.entry_names = set(program.counters)
@@ -61,8 +61,8 @@ class _Trials:
             parts = [gauge.name, f"{gauge.name}.peak"] + ([f"{gauge.name}.area"] if gauge.clock else [])
             self.entry_names.update(parts)
             names += [var(n, "real") for n in parts]
-        self.sampler = Sampler(list(owed.start), names, definitions)
-        self.given = [compile_term(f, definitions) for f in owed.start]
+        self.sampler = Sampler(list(owed.start), names, evaluator)
+        self.given = [evaluator.compiled(f) for f in owed.start]
         self.budget = EVENT_BUDGET
 
     def broken(self) -> dict[Key, Broken]:
