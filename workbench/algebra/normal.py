@@ -183,21 +183,22 @@ class Algebra(Operators):
     def _rewritten(
         self, p: Poly, known: Mapping[Atom, Poly], memo: Rewritten, used: set[Atom] | None, *, again: bool
     ) -> Poly:
-        if p.deep.isdisjoint(known):
+        untouched = known.keys().isdisjoint
+        if untouched(p.deep):
             return p
         parts: list[Poly] = []
         for mono, c in p.terms.items():
-            product = constant(c)
-            for a, e in mono:
-                if a.deep.isdisjoint(known):
-                    product = self.times(product, of_atom(a, e))
+            kept = tuple(f for f in mono if untouched(f[0].deep))
+            product = Poly({kept: c})
+            for a, e in mono if len(kept) < len(mono) else ():
+                if untouched(a.deep):
                     continue
                 if a not in memo:
                     memo[a] = self._image(a, known, memo, again=again)
                 image, fired = memo[a]
                 if used is not None:
                     used |= fired
-                product = self.times(product, self.raised(image, e))
+                product = self.times(product, image if e == 1 else self.raised(image, e))
             parts.append(product)
         return total(parts)
 
@@ -214,7 +215,7 @@ class Algebra(Operators):
         else:
             parts.extend(self._rewritten(part, known, memo, fired, again=again) for part in a.parts[2:])
         built = self.rebuilt(a, tuple(parts))
-        if again and not built.deep.isdisjoint(known):  # it became something that is known
+        if again and not known.keys().isdisjoint(built.deep):  # it became something that is known
             built = self._rewritten(built, known, {}, fired, again=False)
         return built, frozenset(fired)
 

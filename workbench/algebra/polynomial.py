@@ -234,9 +234,10 @@ class Poly:
 
 
 def tidy(value: Rational) -> Rational:
-    if isinstance(value, Fraction) and value.denominator == 1:
-        return value.numerator
-    return value
+    # the exact type: asking whether it is an instance of an abstract class takes ten times as long
+    if type(value) is int or value.denominator != 1:
+        return value
+    return value.numerator
 
 
 def constant(value: Rational) -> Poly:
@@ -316,10 +317,11 @@ def times(p: Poly, q: Poly) -> Poly:
     if len(p.terms) * len(q.terms) > PAIR_LIMIT:
         raise TooLargeToNormalize("a product of two long sums")
     terms: dict[Monomial, Rational] = {}
+    get = terms.get
     for m, c in p.terms.items():
         for n, d in q.terms.items():
             mono = times_monomials(m, n)
-            terms[mono] = terms.get(mono, 0) + c * d
+            terms[mono] = get(mono, 0) + c * d
     return _written_out(_limited({mono: tidy(c) for mono, c in terms.items() if c}))
 
 
@@ -332,8 +334,9 @@ def total(parts: Iterable[Poly]) -> Poly:
 
 
 def _written_out(p: Poly) -> Poly:
-    if any(c.numerator.bit_length() + c.denominator.bit_length() > BIT_LIMIT for c in p.terms.values()):
-        raise TooLargeToNormalize("a number of too many digits")
+    for c in p.terms.values():
+        if c.numerator.bit_length() + c.denominator.bit_length() > BIT_LIMIT:
+            raise TooLargeToNormalize("a number of too many digits")
     return p
 
 

@@ -11,7 +11,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from fractions import Fraction
 
-from workbench.algebra.normal import Algebra
+from workbench.algebra.normal import Algebra, Rewritten
 from workbench.algebra.polynomial import NOTHING, UNIT, UNITY, Atom, Poly, constant, minus, of_atom, plus, scaled
 from workbench.algebra.terms import Sort
 from workbench.proof.kernel_facts import NONE, Dependencies, Known, NotProved, Row, atom_facts, atom_row, row_of
@@ -20,6 +20,21 @@ from workbench.proof.laws import Law
 
 # Rewritings of one expression: what an atom became may be known itself, and so on; more than twice is not seen.
 PASSES = 4
+
+
+class _Rewriting:
+    """Some atoms replaced by what they equal, in many expressions: what comes out, and what that rests on."""
+
+    def __init__(self, algebra: Algebra, new: dict[Atom, tuple[Poly, Dependencies]]) -> None:
+        self._algebra = algebra
+        self._new = new
+        self._images = {a: image for a, (image, _) in new.items()}
+        self._memo: Rewritten = {}
+
+    def of(self, p: Poly) -> tuple[Poly, Dependencies]:
+        used: set[Atom] = set()
+        poly = self._algebra.rewrite(p, self._images, self._memo, used)
+        return poly, NONE.union(*(self._new[a][1] for a in used))
 
 
 class State:
@@ -130,33 +145,30 @@ class State:
             if atom.loose or image.loose:
                 raise NotProved("a bound variable outside its sum")
         keys = new.keys()
-        self.images.update((a, image) for a, (image, _) in new.items())
-        self.rests.update((a, deps) for a, (_, deps) in new.items())
-        for a, image in list(self.images.items()):
-            if a not in keys and not keys.isdisjoint(image.deep):
-                self.images[a], deps = self.resolved(image)
+        rewriting = _Rewriting(self.algebra, new)
+        for a, image in self.images.items():
+            if not keys.isdisjoint(image.deep):
+                self.images[a], deps = rewriting.of(image)
                 self.rests[a] |= deps
-        for number, row in self.rows.items():
-            if not keys.isdisjoint(row.poly.deep):
-                poly, deps = self.resolved(row.poly)
-                self.rows[number] = Row(poly, row.relation, row.deps | deps)
         again = [k for k in self.pending if not keys.isdisjoint(k.poly.deep)]
         self.pending = [k for k in self.pending if keys.isdisjoint(k.poly.deep)]
-        for a in list(self.images):
-            if a.parts and a not in keys and not keys.isdisjoint(a.deep):
-                again.append(self._said_again(a))
+        again.extend(self._said_again(a, rewriting) for a in self.images if a.parts and not keys.isdisjoint(a.deep))
+        self.images.update((a, image) for a, (image, _) in new.items())
+        self.rests.update((a, deps) for a, (_, deps) in new.items())
+        for number, row in self.rows.items():
+            if not keys.isdisjoint(row.poly.deep):
+                poly, deps = rewriting.of(row.poly)
+                poly, more = self.resolved(poly)  # it may have become something that is known
+                self.rows[number] = Row(poly, row.relation, row.deps | deps | more)
         return again
 
-    def _said_again(self, a: Atom) -> Known:
+    def _said_again(self, a: Atom, rewriting: _Rewriting) -> Known:
         """The atom has a known value, but is written otherwise now that something in it was replaced."""
-        used: set[Atom] = set()
-        others = {k: v for k, v in self.images.items() if k != a}
-        poly = self.algebra.rewrite(of_atom(a), others, None, used)
-        deps = self.rests[a].union(*(self.rests[u] for u in used))
+        poly, deps = rewriting.of(of_atom(a))
         image = self.images[a]
         if a.idempotent and image.constant is not None:
-            return Known(poly if image.terms else minus(UNITY, poly), deps)
-        return Known(self.algebra.equal(minus(poly, image)), deps)
+            return Known(poly if image.terms else minus(UNITY, poly), deps | self.rests[a])
+        return Known(self.algebra.equal(minus(poly, image)), deps | self.rests[a])
 
     # ---------------------------------------------------------- moves: each returns a new state
     def assume(self, atom: Atom, holds: bool) -> State:
