@@ -223,7 +223,7 @@ class Body:
 
     def _constant(self, term: Term) -> bool:
         """Whether the term keeps its value through the whole routine."""
-        changing = self.assigned | set(self.header.globals.states)
+        changing = self.assigned | set(self.header.globals.states) | set(self.header.globals.resource_names())
         return not any(v.name in changing for v in variables(term))
 
     def _noted(self, name: str, value: Term, names: Locals, before: list[Statement], span: Span) -> Term:

@@ -284,7 +284,9 @@ class Walk:
         spec = self._loop_specification(s, start)
         for p in paths:
             self._entry(p, spec, s.span)
-        if not self.owing.silent and spec.label not in self.loops:
+        if not self.owing.silent:
+            if spec.label in self.loops:
+                raise NotAccounted(f"{spec.label} of {self.routine.name} is reached twice")
             self.loops[spec.label] = s
             self._inside(spec, entry, lambda: self._loop_inside(s, spec, self._with_givens(start, spec)))
         event = specifying.loop_event(self.names, s, spec, self.routine.name, again=False)

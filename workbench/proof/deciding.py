@@ -106,7 +106,7 @@ class Decider:
         trial = tried(narrowed, self.evaluator, tries, seed)
         if trial.broken is None or narrowed.kind == "choice":
             return trial.reached  # that a few candidates fail does not mean that no value is there
-        if narrowed.middle or finding.without:
+        if narrowed.middle or len(narrowed.facts) < len(finding.obligation.facts):
             finding.weak = trial.broken
         else:
             finding.witness = trial.broken
