@@ -219,8 +219,12 @@ class Poly:
 
     @property
     def lead(self) -> Monomial:
-        """The monomial that orients comparisons: the greatest one, the constant last of all."""
-        return max(self.terms)
+        """The monomial that orients comparisons and positive parts: of those with the deepest atoms the greatest.
+
+        With the deepest atom in front, turning round what nests in it is never needed: max(max(a, b), c) stays as
+        long as it is written. The constant comes last of all.
+        """
+        return max(self.terms, key=lambda mono: (max((a.depth for a, _ in mono), default=0), mono))
 
     def coefficient(self, atom: Atom) -> Rational | None:
         """Its coefficient, if the atom stands alone in exactly one term and nowhere else, not even inside an atom."""

@@ -20,7 +20,6 @@ from workbench.algebra.polynomial import (
     of_atom,
     plus,
     scaled,
-    times,
 )
 from workbench.proof import linear
 from workbench.proof.kernel import EquationItem, FromAtom, Item, Leaf, Row, RowRef, State, atom_facts, atom_row
@@ -139,7 +138,7 @@ def product_leaf(state: State, deadline: float | None = None) -> Leaf | None:
         if len(row.poly.terms) * len(other.poly.terms) > 160:
             continue
         try:
-            product = times(row.poly, other.poly)
+            product = state.algebra.times(row.poly, other.poly)
         except TooLargeToNormalize:
             continue
         new = sum(1 for mono in product.terms if mono not in wanted)
@@ -175,6 +174,6 @@ def _equations_times_monomials(state: State, offer: Offer, wanted: set[Monomial]
         if row.relation != "=":
             continue
         for atom in atoms:
-            product = times(row.poly, of_atom(atom))
+            product = state.algebra.times(row.poly, of_atom(atom))
             if sum(1 for mono in product.terms if mono not in wanted) <= 2:
                 offer.equation(product, of_atom(atom), number)

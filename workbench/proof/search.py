@@ -7,7 +7,8 @@ that stand in the way; definitions; bounds; products of facts; undecided facts; 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from itertools import islice
 from time import monotonic
@@ -98,15 +99,16 @@ class Search:
         hints = hints or Hints()
         residue: Poly | None = None
         try:
-            line = self._line(facts, goal, hints.middle)
-            equals_for_equals(line)
-            residue = _residue(line, goal)
-            decide_first(line)
-            for name, args in hints.using:
-                line.use(Instance(name, tuple(self.algebra.normal(a) for a in args)), keep=True)
-            certificate = self._with_cases(line, hints.cases)
-            if certificate is not None:
-                return Attempt(check(self.algebra, facts, goal, self.laws, certificate))
+            with self._clock(hints.middle) as effort:
+                line = Line(effort, start(self.algebra, facts, goal))
+                equals_for_equals(line)
+                residue = _residue(line, goal)
+                decide_first(line)
+                for name, args in hints.using:
+                    line.use(Instance(name, tuple(self.algebra.normal(a) for a in args)), keep=True)
+                certificate = self._with_cases(line, hints.cases)
+                if certificate is not None:
+                    return Attempt(check(self.algebra, facts, goal, self.laws, certificate))
             why = "the search found no way"
         except Stopped:
             why = f"no proof within {self.seconds:g} s"
@@ -119,16 +121,23 @@ class Search:
     def residue(self, facts: Sequence[Term], goal: Term, middle: frozenset[str] = frozenset()) -> Poly | None:
         """Left minus right side of the goal after all equations are put in; None where the goal is no comparison."""
         try:
-            line = self._line(facts, goal, middle)
-            equals_for_equals(line)
-            return _residue(line, goal)
-        except (Stopped, TooLargeToNormalize):
+            with self._clock(middle) as effort:
+                line = Line(effort, start(self.algebra, facts, goal))
+                equals_for_equals(line)
+                return _residue(line, goal)
+        except (NotProved, Stopped, TooLargeToNormalize):
             return None
 
-    def _line(self, facts: Sequence[Term], goal: Term, middle: frozenset[str]) -> Line:
+    @contextmanager
+    def _clock(self, middle: frozenset[str]) -> Iterator[Effort]:
+        """The time runs, in the algebra's long work too."""
         deadline = monotonic() + self.seconds
         effort = Effort(self.algebra, self.laws, self.functions, middle, deadline, self.cancelled)
-        return Line(effort, start(self.algebra, facts, goal))
+        before, self.algebra.tick = self.algebra.tick, effort.tick
+        try:
+            yield effort
+        finally:
+            self.algebra.tick = before
 
     def _with_cases(self, line: Line, cases: Sequence[Term]) -> Certificate | None:
         """A person's case distinctions come first."""
