@@ -37,6 +37,11 @@ class _Rewriting:
         return poly, NONE.union(*(self._new[a][1] for a in used))
 
 
+def _speaks(atom: Atom) -> bool:
+    """What it equals is said nowhere else: a decided comparison stands as a row, a positive part is what is inside."""
+    return atom.kind not in ("var", "pos", "ind") or atom.data == ("eq",)
+
+
 class State:
     """What is known on one branch. A move returns a new state; rows keep their number for good."""
 
@@ -125,7 +130,8 @@ class State:
                     return self._decided({atom: value == 1}, k.deps)
                 self._add_row(Row(UNITY, "=", k.deps))  # an indicator is 0 or 1
                 return {}
-        self.pending.append(k)
+        if all(p.poly != k.poly for p in self.pending):
+            self.pending.append(k)
         return {}
 
     def _decided(self, truths: dict[Atom, bool], deps: Dependencies) -> dict[Atom, tuple[Poly, Dependencies]]:
@@ -136,6 +142,8 @@ class State:
         return {atom: (UNITY if holds else NOTHING, deps) for atom, holds in truths.items()}
 
     def _add_row(self, row: Row) -> None:
+        if any(r.relation == row.relation and r.poly == row.poly for r in self.rows.values()):
+            return
         self.rows[self.next_row] = row
         self.next_row += 1
 
@@ -152,7 +160,10 @@ class State:
                 self.rests[a] |= deps
         again = [k for k in self.pending if not keys.isdisjoint(k.poly.deep)]
         self.pending = [k for k in self.pending if keys.isdisjoint(k.poly.deep)]
-        again.extend(self._said_again(a, rewriting) for a in self.images if a.parts and not keys.isdisjoint(a.deep))
+        for a in [a for a in self.images if a.parts and not keys.isdisjoint(a.deep)]:
+            if _speaks(a):
+                again.append(self._said_again(a, rewriting))
+            del self.images[a], self.rests[a]  # nothing is written like that any more
         self.images.update((a, image) for a, (image, _) in new.items())
         self.rests.update((a, deps) for a, (_, deps) in new.items())
         for number, row in self.rows.items():

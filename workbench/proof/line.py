@@ -11,7 +11,7 @@ from time import monotonic
 from typing import TypeAlias
 
 from workbench.algebra.normal import Algebra
-from workbench.algebra.polynomial import NOTHING, Atom, Poly, TooLargeToNormalize
+from workbench.algebra.polynomial import Atom, Poly, TooLargeToNormalize
 from workbench.errors import UllageError
 from workbench.proof.kernel import Certificate, Cut, Leaf, Move, NotProved, State, Then, ThreeWays, moved
 from workbench.proof.laws import Law
@@ -107,8 +107,12 @@ class Line:
     def compare_three_ways(self) -> bool:
         """An equation that fails: what is compared lies above or below. One such equation a call."""
         for atom, image in self.state.images.items():
-            if atom.kind == "ind" and atom.data == ("eq",) and image is NOTHING and atom not in self.compared:
-                self.compared.add(atom)
+            if atom.kind != "ind" or atom.data != ("eq",) or image.terms or atom in self.compared:
+                continue
+            self.compared.add(atom)
+            signs = (self.effort.algebra.compare(atom.parts[0], strict=strict) for strict in (True, False))
+            above, weak = (self.state.resolved(sign)[0] for sign in signs)
+            if above != weak:
                 self.move(ThreeWays(atom))
                 return True
         return False

@@ -175,17 +175,26 @@ class Search:
         """Both branches of a comparison, or of the sign inside a positive part."""
         line.effort.tick()
         if atom.kind == "pos":
-            opened = line.branch()
-            opened.move(OpenPositivePart(atom))
-            inner = self.algebra.rewrite(self.algebra.compare(atom.parts[0], strict=False), line.state.images)
-            signs = [a for a in sorted(inner.atoms) if a.idempotent]
-            found = self._split(opened, signs[0], solve) if signs else solve(opened.branch())
-            return None if found is None else opened.finished(found)
+            return self._split_positive_part(line, atom, solve)
         yes = solve(line.branch(line.state.assume(atom, True)))
         if yes is None:
             return None
         no = solve(line.branch(line.state.assume(atom, False)))
         return None if no is None else Cut(atom, yes, no)
+
+    def _split_positive_part(
+        self, line: Line, atom: Atom, solve: Callable[[Line], Certificate | None]
+    ) -> Certificate | None:
+        """The sign inside first: then the positive part is what is inside, or 0, and nothing grows."""
+
+        def opened(branch: Line) -> Certificate | None:
+            branch.attempt(OpenPositivePart(atom))
+            found = solve(branch.branch())
+            return None if found is None else branch.finished(found)
+
+        sign, _ = line.state.resolved(self.algebra.compare(atom.parts[0], strict=False))
+        undecided_signs = [a for a in sorted(sign.atoms) if a.idempotent]
+        return self._split(line, undecided_signs[0], opened) if undecided_signs else opened(line.branch())
 
     def _rounds(self, line: Line, moves: Callable[[State], Iterable[Move]]) -> Leaf | None:
         """Moves of one kind until none says anything new, then the rows added up."""
