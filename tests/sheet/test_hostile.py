@@ -171,3 +171,11 @@ def test_the_deepest_text_needs_two_thirds_of_the_stack(body: str) -> None:
         assert read_sheet(write_sheet(sheet), "").problems == ()
     finally:
         sys.setrecursionlimit(usual)
+
+
+def test_a_sheet_of_too_many_words_is_told_so_at_once() -> None:
+    text = "routine r(n: nat)\nis\n" + "  n:=n+1\n" * 100_000 + "end\n"
+    began = time.process_time()
+    (problem,) = read_sheet(text, "long.ullage").problems
+    assert "words and signs" in problem.message and problem.span.line > 10_000
+    assert time.process_time() - began < 2

@@ -233,6 +233,10 @@ class Operators:
                     inverted = self._atom("inv", (), (of_atom(a),), nonneg=a.nonneg, positive=a.positive)
                     result = self.times(result, of_atom(inverted, e))
             return result
+        common = _common(p)
+        if common:
+            rest = Poly({_without(mono, common): c for mono, c in p.terms.items()})
+            return self.times(self.inverse(Poly({common: 1})), self.inverse(rest))
         inner, factor = primitive(p)
         if inner.terms[inner.lead] < 0:
             inner, factor = scaled(inner, -1), -factor
@@ -380,6 +384,19 @@ class Operators:
             case "call" | "truth":
                 return self.call(str(a.data[1]), a.data[2], parts)  # type: ignore[arg-type]
         raise ValueError(f"nothing to rebuild in {a.kind}")
+
+
+def _common(p: Poly) -> Monomial:
+    """What all its terms have as a factor."""
+    first, *others = p.terms
+    return tuple(
+        (a, least) for a, e in first if (least := min((e, *(dict(mono).get(a, 0) for mono in others)))) > 0
+    )
+
+
+def _without(mono: Monomial, factor: Monomial) -> Monomial:
+    taken = dict(factor)
+    return tuple((a, e - taken.get(a, 0)) for a, e in mono if e != taken.get(a, 0))
 
 
 def _bits(value: Rational) -> int:

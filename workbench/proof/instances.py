@@ -18,6 +18,8 @@ from workbench.proof.laws import Law
 
 # Pairs of atoms that one stage relates by a law of two arguments.
 PAIR_LIMIT = 24
+# Products of two atoms whose squares are brought in.
+SQUARE_LIMIT = 8
 # Sums of up to one term more than this are written out.
 WRITTEN_OUT = 8
 # Antidifferences are looked for up to this degree.
@@ -39,12 +41,12 @@ def deep_atoms(state: State) -> list[Atom]:
                 continue
             found[atom] = None
             stack.extend(atom.parts)
-    found.update((a, None) for a in state.images if a.kind in _LAWFUL and not a.loose)
+    found.update((a, None) for a in state.images if a.kind in _LAWFUL or a.data[:1] == ("call",))
     return list(found)
 
 
 # Kinds of atoms that laws speak of.
-_LAWFUL = frozenset(("pow", "lg", "fact", "binom", "floor", "call", "sum"))
+_LAWFUL = frozenset(("pow", "lg", "fact", "binom", "floor", "inv", "sum"))
 
 
 # ---------------------------------------------------------------- stage 1: equations that simplify
@@ -257,8 +259,8 @@ def _multiplied(p: Poly, divisor: Poly) -> Poly:
 
 
 def _monotone(atoms: list[Atom]) -> Iterator[Move]:
-    """Growth of lg, floor and powers between two atoms of the kind."""
-    laws = {"lg": "lg grows", "floor": "floor grows"}
+    """Growth of lg, floor, quotients and powers between two atoms of the kind."""
+    laws = {"lg": "lg grows", "floor": "floor grows", "inv": "quotient falls"}
     taken = 0
     for a, b in product(atoms, repeat=2):
         if a is b or a.kind != b.kind or taken >= PAIR_LIMIT:
@@ -270,6 +272,24 @@ def _monotone(atoms: list[Atom]) -> Iterator[Move]:
             taken += 1
             yield Instance("power grows", (a.parts[0], a.parts[1], b.parts[1]))
             yield Instance("tangent of a power", (a.parts[0], b.parts[1], a.parts[1]))
+        elif a.kind == "pow" and a.parts[1] == b.parts[1] and a.parts[1].is_integer:
+            taken += 1
+            yield Instance("power grows with its base", (a.parts[0], b.parts[0], a.parts[1]))
+
+
+def squares(state: State) -> Iterator[Move]:
+    """Squares of sums and differences, for products of two atoms that stand in rows."""
+    pairs: dict[tuple[Atom, Atom], None] = {}
+    for row in state.rows.values():
+        for mono in row.poly.terms:
+            if len(mono) == 2 and mono[0][1] == mono[1][1] == 1:
+                pairs[mono[0][0], mono[1][0]] = None
+            elif len(mono) == 1 and mono[0][1] == 2 and not mono[0][0].nonneg:
+                yield Instance("square", (of_atom(mono[0][0]),))
+    for a, b in list(pairs)[:SQUARE_LIMIT]:
+        yield Instance("square", (minus(of_atom(a), of_atom(b)),))
+        if not (a.nonneg and b.nonneg):
+            yield Instance("square", (plus(of_atom(a), of_atom(b)),))
 
 
 # ---------------------------------------------------------------- a user's laws, where they match

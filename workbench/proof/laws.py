@@ -81,7 +81,10 @@ def _inverse_laws() -> list[Law]:
     inverse = app("/", ONE, x)
     return [
         Law("quotient", (x,), app("!=", x, ZERO), _eq(_times(x, inverse), ONE), DEFINITION),
-        Law("sign of a quotient", (x,), _lt(ZERO, x), _lt(ZERO, inverse), "field axioms"),
+        Law("sign of a quotient", (x,), _lt(ZERO, x), _lt(ZERO, inverse), "ordered fields"),
+        Law(
+            "quotient falls", (x, y), _both(_lt(ZERO, x), _le(x, y)), _le(app("/", ONE, y), inverse), "ordered fields",
+        ),
         Law(
             "division", (x, y), _lt(ZERO, y),
             _both(_le(_times(y, app("div", x, y)), x), _lt(x, _plus(_times(y, app("div", x, y)), y))),
@@ -103,7 +106,7 @@ def _floor_laws() -> list[Law]:
 
 
 def _power_laws() -> list[Law]:
-    b, = _reals("b")
+    a, b = _reals("a", "b")
     x, k = _integers("x", "k")
     n, = _naturals("n")
     base_positive = _lt(ZERO, b)
@@ -119,6 +122,10 @@ def _power_laws() -> list[Law]:
         Law("power at least one", (b, n), _le(ONE, b), _le(ONE, _power(b, n)), POWERS),
         Law(
             "power grows", (b, x, k), _both(_le(ONE, b), _le(x, k)), _le(_power(b, x), _power(b, k)), POWERS,
+        ),
+        Law(
+            "power grows with its base", (a, b, n), _both(_le(ZERO, a), _le(a, b)),
+            _le(_power(a, n), _power(b, n)), POWERS,
         ),
         Law(
             "tangent of a power", (b, x, k), base_positive, _le(tangent, _power(b, x)),

@@ -5,9 +5,10 @@ Collects the rows that a state offers, asks `linear` for a combination, and writ
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from fractions import Fraction
-from itertools import combinations_with_replacement
+from itertools import combinations_with_replacement, product
+from typing import TypeAlias
 
 from workbench.algebra.polynomial import (
     NOTHING,
@@ -26,6 +27,9 @@ from workbench.proof.kernel import EquationItem, FromAtom, Item, Leaf, Row, RowR
 
 # Products of facts that go into one attempt: more of them found nothing more on the shipped sheets, only later.
 PRODUCT_LIMIT = 260
+# Terms of a fact that is multiplied by more than one factor, and how many such products go into one attempt.
+FACTOR_TERMS = 4
+TRIPLE_LIMIT = 60
 # Monomials that get a sign of their own in one attempt.
 MONOMIAL_LIMIT = 120
 
@@ -74,7 +78,7 @@ def relevant_atoms(polys: Iterable[Poly]) -> list[Atom]:
     found: dict[Atom, None] = {}
     stack = list(polys)
     while stack:
-        for atom in stack.pop().atoms:
+        for atom in sorted(stack.pop().atoms):
             if atom in found or atom.loose:
                 continue
             found[atom] = None
@@ -96,26 +100,51 @@ def basic_offer(state: State) -> Offer:
         for which in atom_facts(atom):
             row = atom_row(state.algebra, atom, which)
             offer.inequality(row.poly, row.relation == ">", (FromAtom(atom, which),))
+    signs = _signs(state)
     monomials: dict[Monomial, None] = {}
     for offered in offer.rows:
         monomials.update(dict.fromkeys(offered.coefficients))
     for mono in list(monomials)[:MONOMIAL_LIMIT]:
-        _sign_of_monomial(state, offer, mono)
+        _sign_of_monomial(offer, signs, mono)
     return offer
 
 
-def _sign_of_monomial(state: State, offer: Offer, mono: Monomial) -> None:
-    """A product of atoms that are never negative (or squared) is not negative."""
-    if len(mono) < 2 and (not mono or mono[0][1] == 1):
-        return
+# How an atom is known not to be negative, and whether it is known to be positive.
+Sign: TypeAlias = tuple[RowRef, bool]
+
+
+def _signs(state: State) -> dict[Atom, Sign]:
+    """Atoms that a fact says not to be negative."""
+    found: dict[Atom, Sign] = {}
+    for number, row in state.rows.items():
+        if len(row.poly.terms) == 1 and row.relation != "=":
+            (mono, c), = row.poly.terms.items()
+            if c == 1 and len(mono) == 1 and mono[0][1] == 1:
+                found[mono[0][0]] = (number, row.relation == ">")
+    return found
+
+
+def _sign(signs: Mapping[Atom, Sign], mono: Monomial) -> tuple[tuple[RowRef, ...], bool] | None:
+    """The facts whose product says that the monomial is not negative, and whether it is positive."""
     factors: list[RowRef] = []
     strict = True
     for atom, exponent in mono:
-        if exponent < 0 or not atom.nonneg or atom.loose:
-            return
-        factors.extend([FromAtom(atom, "nonneg")] * exponent)
-        strict = strict and atom.positive
-    offer.inequality(Poly({mono: 1}), strict, tuple(factors))
+        if exponent < 0 or atom.loose:
+            return None
+        sign = (FromAtom(atom, "nonneg"), atom.positive) if atom.nonneg else signs.get(atom)
+        if sign is None:
+            return None
+        factors.extend([sign[0]] * exponent)
+        strict = strict and sign[1]
+    return tuple(factors), strict
+
+
+def _sign_of_monomial(offer: Offer, signs: Mapping[Atom, Sign], mono: Monomial) -> None:
+    """A product of what is never negative is not negative."""
+    if len(mono) > 1 or (mono and mono[0][1] > 1):
+        sign = _sign(signs, mono)
+        if sign is not None:
+            offer.inequality(Poly({mono: 1}), sign[1], sign[0])
 
 
 def linear_leaf(state: State, deadline: float | None = None) -> Leaf | None:
@@ -138,20 +167,50 @@ def product_leaf(state: State, deadline: float | None = None) -> Leaf | None:
         if len(row.poly.terms) * len(other.poly.terms) > 160:
             continue
         try:
-            product = state.algebra.times(row.poly, other.poly)
+            multiplied = state.algebra.times(row.poly, other.poly)
         except TooLargeToNormalize:
             continue
-        new = sum(1 for mono in product.terms if mono not in wanted)
+        new = sum(1 for mono in multiplied.terms if mono not in wanted)
         strict = row.relation == ">" and other.relation == ">"
-        ranked.append((new, len(product.terms), product, strict, (ref, other_ref)))
+        ranked.append((new, len(multiplied.terms), multiplied, strict, (ref, other_ref)))
     ranked.sort(key=lambda r: r[:2])
-    for _, _, product, strict, factors in ranked[:PRODUCT_LIMIT]:
-        offer.inequality(product, strict, factors)
+    for _, _, multiplied, strict, factors in ranked[:PRODUCT_LIMIT]:
+        offer.inequality(multiplied, strict, factors)
+    signs = _signs(state)
+    _facts_times_monomials(state, offer, inequalities, signs)
     _equations_times_monomials(state, offer, wanted)
     for offered in list(offer.rows):
         for mono in list(offered.coefficients)[:MONOMIAL_LIMIT]:
-            _sign_of_monomial(state, offer, mono)
+            _sign_of_monomial(offer, signs, mono)
     return offer.leaf(deadline)
+
+
+def _facts_times_monomials(
+    state: State, offer: Offer, inequalities: list[tuple[RowRef, Row]], signs: Mapping[Atom, Sign]
+) -> None:
+    """Facts times what makes one of their monomials one that stands in a row already, of degree three or more."""
+    rows = state.rows.values()
+    wanted = dict.fromkeys(m for row in rows for m in row.poly.terms if sum(e for _, e in m) > 2)
+    products: dict[tuple[RowRef, Monomial], Row] = {}
+    for (ref, row), mono in product(inequalities, wanted):
+        for own in row.poly.terms if len(row.poly.terms) <= FACTOR_TERMS else ():
+            rest = _quotient(mono, own)
+            if rest and sum(e for _, e in rest) > 1:
+                products[ref, rest] = row
+    for (ref, rest), row in list(products.items())[:TRIPLE_LIMIT]:
+        sign = _sign(signs, rest)
+        if sign is not None:
+            poly = state.algebra.times(row.poly, Poly({rest: 1}))
+            offer.inequality(poly, sign[1] and row.relation == ">", (ref, *sign[0]))
+
+
+def _quotient(mono: Monomial, divisor: Monomial) -> Monomial | None:
+    left = dict(mono)
+    for atom, exponent in divisor:
+        if left.get(atom, 0) < exponent:
+            return None
+        left[atom] = left.get(atom, 0) - exponent
+    return tuple((a, e) for a, e in left.items() if e)
 
 
 def _wanted(state: State) -> set[Monomial]:
@@ -169,11 +228,12 @@ def _factors(state: State) -> list[tuple[RowRef, Row]]:
 
 
 def _equations_times_monomials(state: State, offer: Offer, wanted: set[Monomial]) -> None:
-    atoms = relevant_atoms(r.poly for r in state.rows.values())
+    factors = [of_atom(a) for a in relevant_atoms(r.poly for r in state.rows.values())]
+    factors += [of_atom(a, -1) for a in state.inverted if state.images.keys().isdisjoint(a.deep)]
     for number, row in state.rows.items():
         if row.relation != "=":
             continue
-        for atom in atoms:
-            product = state.algebra.times(row.poly, of_atom(atom))
-            if sum(1 for mono in product.terms if mono not in wanted) <= 2:
-                offer.equation(product, of_atom(atom), number)
+        for factor in factors:
+            multiple = state.algebra.times(row.poly, factor)
+            if sum(1 for mono in multiple.terms if mono not in wanted) <= 2:
+                offer.equation(multiple, factor, number)

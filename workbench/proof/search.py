@@ -249,7 +249,11 @@ class Search:
         if leaf is not None:
             return leaf
         atoms = instances.deep_atoms(line.state)
-        moves = [*instances.matching(self.user_laws, atoms, self._formulas), *instances.bounding(atoms)]
+        moves = [
+            *instances.matching(self.user_laws, atoms, self._formulas),
+            *instances.bounding(atoms),
+            *instances.squares(line.state),
+        ]
         for move in moves:
             line.use(move)
         tidy(line)

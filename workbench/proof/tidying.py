@@ -32,7 +32,7 @@ def _definition(line: Line) -> Define | None:
     for number, row in line.state.rows.items():
         if row.relation != "=" or not row.poly.terms:
             continue
-        for atom in row.poly.atoms:
+        for atom in sorted(row.poly.atoms):
             slope = row.poly.coefficient(atom)
             if slope is None or atom.idempotent or atom.loose:
                 continue
@@ -61,7 +61,7 @@ def _shift(line: Line) -> bool:
     for number, row in line.state.rows.items():
         if row.relation != ">=" or not row.deps:
             continue
-        for atom in row.poly.atoms:
+        for atom in sorted(row.poly.atoms):
             if atom.kind != "var" or not atom.integer or row.poly.coefficient(atom) != 1:
                 continue
             if atom in line.state.inverted:

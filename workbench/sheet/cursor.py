@@ -54,6 +54,11 @@ class Cursor:
         self.item_start = 0  # of the item that is being read
         self._line_of_last_problem: tuple[int, str] = (0, "")
 
+    @property
+    def last_token(self) -> Token:
+        """The end of the text; or of what was read of it, where there is too much."""
+        return token_of(self._tokens[self._last])
+
     # -------------------------------------------------------------- moving
     def advance(self) -> Token:
         """Takes the present token; the last one can be taken again and again."""

@@ -11,7 +11,7 @@ from collections.abc import Callable
 from functools import partial
 from typing import NamedTuple, TypeAlias
 
-from workbench.sheet.words import HEADER_WORDS, ITEM_WORDS, LEVELS, RESERVED, STATEMENT_WORDS
+from workbench.sheet.words import HEADER_WORDS, ITEM_WORDS, LEVELS, MOST_TOKENS, RESERVED, STATEMENT_WORDS
 
 NAME, NUMBER, STRING, NEWLINE, BAD, END_OF_TEXT = "name", "number", "string", "newline", "bad", "end of text"
 
@@ -59,7 +59,10 @@ _OUTSIDE = (STATEMENT_WORDS - {"if", "then", "else", "from", "to", "size"}) | HE
 
 
 def tokens_of(text: str) -> list[Raw]:
-    """All tokens of the text, comments left out, newlines as they stand; END_OF_TEXT last."""
+    """All tokens of the text, comments left out, newlines as they stand; END_OF_TEXT last.
+
+    Of a text with too many of them only the first MOST_TOKENS + 1.
+    """
     found: list[Raw] = []
     line, line_start = 1, 0
     for match in _TOKEN.finditer(text):
@@ -79,6 +82,9 @@ def tokens_of(text: str) -> list[Raw]:
         else:
             kind = group  # newline, number, string, bad
         found.append((kind, word, start, end, line, column))
+        if len(found) > MOST_TOKENS:
+            found.append((END_OF_TEXT, "", end, end, line, end - line_start + 1))
+            break
         if kind == NEWLINE and word != ";":
             line, line_start = line + 1, end
     return found

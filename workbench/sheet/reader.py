@@ -13,7 +13,7 @@ from workbench.sheet.items import ItemReader
 from workbench.sheet.lexer import END_OF_TEXT
 from workbench.sheet.scopes import CERTAIN, Doubts
 from workbench.sheet.tree import Expr, Sheet
-from workbench.sheet.words import LARGEST_SHEET
+from workbench.sheet.words import LARGEST_SHEET, MOST_TOKENS
 
 
 @dataclass(frozen=True, slots=True)
@@ -48,6 +48,12 @@ def decode_sheet(data: bytes, path: str) -> tuple[str | None, tuple[Problem, ...
 def read_sheet(text: str, path: str) -> Reading:
     """The tree of a sheet's text; `path` is what messages call it. Grammar only: names and types are `checking`'s."""
     reader = ItemReader(text, path)
+    last = reader.last_token
+    if last.end < len(text):
+        span = Span(last.start, last.end, last.line, last.column)
+        message = f"the sheet has more than {MOST_TOKENS:,} words and signs"
+        mend = "divide it, and join the parts with 'use'"
+        return Reading(Sheet(None, ()), (Problem(path, span, message, mend, line_of(text, span)),))
     try:
         sheet = reader.sheet()
     except Enough:

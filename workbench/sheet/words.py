@@ -50,6 +50,7 @@ TALLEST = NESTING + 50  # depth of an expression's tree and the blocks round it:
 LONGEST_CHAIN = 2_000  # operators in a row, as in a + b + …; more is no formula that a person wrote
 LARGEST_DIGITS = 4_000  # of a number, written or worked out: Python itself refuses to print more than 4,300
 LARGEST_SHEET = 2**20  # bytes, as the language promises
+MOST_TOKENS = 120_000  # words and signs: ten thousand full lines, which are read within two seconds
 MOST_PROBLEMS = 100  # told in one go; whoever has more mends these first
 SHOWN = 40  # characters of the sheet's text that a message quotes
 CANDIDATES = 2_000  # names looked through for the nearest one: comparing costs about 10 µs each
