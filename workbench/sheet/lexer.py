@@ -82,11 +82,11 @@ def tokens_of(text: str) -> list[Raw]:
         else:
             kind = group  # newline, number, string, bad
         found.append((kind, word, start, end, line, column))
+        if kind == NEWLINE and word != ";":
+            line, line_start = line + 1, end
         if len(found) > MOST_TOKENS:
             found.append((END_OF_TEXT, "", end, end, line, end - line_start + 1))
             break
-        if kind == NEWLINE and word != ";":
-            line, line_start = line + 1, end
     return found
 
 
