@@ -70,7 +70,7 @@ def hunt(seed: int, seconds: float) -> Tally:
 
 def _try(program: Program, report: RoutineReport, text: str, seed: int, tally: Tally) -> None:
     machine = Machine(program)
-    proved = [(c, compile_term(c.claim.formula, machine.definitions)) for c in report.claims
+    proved = [(c, compile_term(c.claim.formula, machine.evaluator.functions)) for c in report.claims
               if c.verdict == "proved" and not c.specification]  # fmt: skip
     if not proved:
         return

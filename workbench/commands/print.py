@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import sys
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
@@ -12,6 +11,7 @@ from workbench.exits import Exit
 from workbench.library.checking import check_loaded
 from workbench.library.folders import sheets_below
 from workbench.library.loading import load
+from workbench.library.writing import write_whole
 from workbench.printing.messages import format_problem
 from workbench.printing.plain import ending, sheet_text
 
@@ -99,27 +99,7 @@ def _read(arguments: Sequence[str]) -> _Options:
 
 
 def _replace(output: str, lines: Iterator[str]) -> None:
-    """The file is the old one or the new one, whole, whatever happens in between."""
-    import tempfile
-
-    folder = os.path.dirname(os.path.abspath(output))
     try:
-        handle, name = tempfile.mkstemp(prefix=".ullage-", dir=folder)
+        write_whole(output, (f"{line}\n".encode() for line in lines))
     except OSError as e:
         raise UsageError(f"{output!a} cannot be written: {e.strerror}") from None
-    try:
-        with open(handle, "w", encoding="utf-8") as file:
-            for line in lines:
-                file.write(line + "\n")
-            file.flush()
-            os.fsync(file.fileno())
-        if os.path.exists(output):
-            os.chmod(name, os.stat(output).st_mode & 0o7777)
-        else:
-            os.chmod(name, 0o644)
-        os.replace(name, output)
-    except BaseException as e:
-        os.unlink(name)
-        if isinstance(e, OSError):
-            raise UsageError(f"{output!a} cannot be written: {e.strerror}") from None
-        raise

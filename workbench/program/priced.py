@@ -12,6 +12,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import TypeAlias
 
+from workbench.algebra.evaluate import Definition
 from workbench.algebra.terms import Sort, Term
 from workbench.errors import Span
 
@@ -275,6 +276,13 @@ class Program:
     laws: dict[str, Law]
     routines: dict[str, Routine]
     variables: dict[str, Sort] = field(default_factory=dict)
+
+    def definitions(self) -> dict[str, Definition]:
+        """The functions as evaluation takes them."""
+        return {
+            f.name: Definition(tuple((p.name, p.sort) for p in f.parameters), f.sort, f.body, f.given)
+            for f in self.functions.values()
+        }
 
     def clocked(self, counter: str) -> tuple[Gauge, ...]:
         """Gauges whose area is taken over this counter."""

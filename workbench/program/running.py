@@ -13,11 +13,10 @@ from typing import Any
 
 from workbench.algebra.evaluate import (
     Compiled,
-    Definition,
+    Evaluator,
     TooLarge,
     Undefined,
     Value,
-    compile_term,
     is_of_sort,
 )
 from workbench.algebra.terms import Rational, Sort, Term, var
@@ -125,18 +124,12 @@ class Machine:
 
     def __init__(self, program: Program) -> None:
         self.program = program
-        self.definitions = {
-            f.name: Definition(tuple((p.name, p.sort) for p in f.parameters), f.sort, f.body, f.given)
-            for f in program.functions.values()
-        }
-        self._compiled: dict[Term, Compiled] = {}
+        self.evaluator = Evaluator(program.definitions())
         self._ends: dict[tuple[str, Sort, Term], list[Compiled]] = {}
 
     def compiled(self, term: Term) -> Compiled:
         """The term as a function of names' values, made once."""
-        if term not in self._compiled:
-            self._compiled[term] = compile_term(term, self.definitions)
-        return self._compiled[term]
+        return self.evaluator.compiled(term)
 
     def ends(self, s: Choose) -> list[Compiled]:
         """Values worth trying for a choice."""

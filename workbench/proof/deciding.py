@@ -8,7 +8,7 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 from workbench.algebra.denormal import term_of
-from workbench.algebra.evaluate import Definition, Evaluator
+from workbench.algebra.evaluate import Evaluator
 from workbench.algebra.normal import Algebra
 from workbench.algebra.terms import FALSE, Rational, Term, app, subterms, var
 from workbench.program.mathematics import law_condition
@@ -55,7 +55,7 @@ class Decider:
         self.program = program
         self.seconds = seconds
         self.cancelled = cancelled
-        self.definitions = {f.name: definition_of(f) for f in program.functions.values()}
+        self.definitions = program.definitions()
         self.evaluator = Evaluator(self.definitions)
         self.laws: dict[str, Law] = {law.name: law for law in lawbook.built_in_laws()}
         self.functions: dict[str, Law] = {}
@@ -162,11 +162,6 @@ class Decider:
             if law is not None:
                 names |= {s.name for t in (law.given, law.formula) for s in subterms(t) if s.op == "call"}
         return {Lean("", f"function {n}", "") for n in names}
-
-
-def definition_of(f: Function) -> Definition:
-    """The function as evaluation takes it."""
-    return Definition(tuple((p.name, p.sort) for p in f.parameters), f.sort, f.body, f.given)
 
 
 def function_law(f: Function) -> Law:

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import os
-import tempfile
 from dataclasses import dataclass
 
 from workbench.errors import UllageError
+from workbench.library.writing import write_whole
 from workbench.sheet.reader import decode_sheet
 
 
@@ -51,21 +51,10 @@ class Disk:
         if not over and self.is_changed:
             raise ChangedOnDisk(f"{self.path} was changed by somebody else meanwhile")
         data = text.encode("utf-8")
-        target = os.path.realpath(self.path)
-        name = ""
+        if os.path.exists(self.path) and not os.access(self.path, os.W_OK):
+            raise NotSaved(f"{self.path} may not be written; the text is still here")
         try:
-            mode = os.stat(target).st_mode & 0o7777 if os.path.exists(target) else 0o644
-            if os.path.exists(target) and not os.access(target, os.W_OK):
-                raise NotSaved(f"{self.path} may not be written; the text is still here")
-            handle, name = tempfile.mkstemp(prefix=".ullage-", dir=os.path.dirname(target))
-            with open(handle, "wb") as file:
-                file.write(data)
-                file.flush()
-                os.fsync(file.fileno())
-            os.chmod(name, mode)
-            os.replace(name, target)
+            write_whole(self.path, [data])
         except OSError as e:
-            if name and os.path.exists(name):
-                os.unlink(name)
             raise NotSaved(f"{self.path} cannot be written: {e.strerror}; the text is still here") from None
         return Disk(self.path, data, text)
