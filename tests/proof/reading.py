@@ -10,7 +10,8 @@ from collections.abc import Iterator, Mapping, Sequence
 from fractions import Fraction
 from math import comb, factorial, floor
 
-from workbench.algebra.terms import Rational, Term, variables
+from workbench.algebra.polynomial import Atom, Poly
+from workbench.algebra.terms import Rational, Term, app, call, num, variables
 from workbench.proof.laws import Law
 
 ANY = 77  # what fact, binom and functions are where they are not defined: some natural; nothing may rely on which
@@ -73,9 +74,9 @@ def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -
         case "lg":
             return floor(a[0]).bit_length() - 1 if a[0] >= 1 else 0
         case "fact":
-            return factorial(int(a[0])) if 0 <= a[0] <= 30 and a[0] == floor(a[0]) else ANY
+            return factorial(_small(a[0])) if _of_sort(a[0], "nat") else ANY
         case "binom":
-            return comb(int(a[0]), int(a[1])) if min(a) >= 0 and all(x == floor(x) for x in a) else ANY
+            return comb(_small(a[0]), _small(a[1])) if all(_of_sort(x, "nat") for x in a) else ANY
         case "max" | "or":
             return max(a)
         case "min" | "and":
@@ -101,8 +102,50 @@ def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -
     raise ValueError(op)
 
 
+def _small(value: Rational) -> int:
+    if value > EXPONENT_LIMIT:
+        raise Unknown("too large")
+    return int(value)
+
+
 def _of_sort(value: Rational, sort: str) -> bool:
     return sort in ("real", "bool") or (value == floor(value) and (sort == "int" or value >= 0))
+
+
+def inside(atom: Atom, values: Values, functions: Mapping[str, Law] | None = None) -> Rational:
+    """The value of an atom of the normal form."""
+    if atom.kind == "var" or (atom.kind == "truth" and atom.data[0] == "var"):
+        return values[str(atom.data[atom.kind == "truth"])]
+    if atom.kind == "sum":
+        name = str(atom.data[0])
+        low, high = (value_of(p, values, functions) for p in atom.parts[:2])
+        if low != floor(low) or high != floor(high):
+            raise Unknown("a sum with a fractional bound")
+        steps = range(int(low), int(high) + 1)
+        return sum((value_of(atom.parts[2], {**values, name: i}, functions) for i in steps), Fraction(0))
+    parts = tuple(num(value_of(p, values, functions)) for p in atom.parts)
+    match atom.kind:
+        case "ind":
+            return total(app({"eq": "=", "ge": ">=", "gt": ">"}[str(atom.data[0])], parts[0], num(0)), values)
+        case "pos":
+            return max(parts[0].value, 0)
+        case "inv":
+            return total(app("/", num(1), parts[0]), values)
+        case "pow":
+            return power(parts[0].value, parts[1].value)
+        case "call" | "truth":
+            return total(call(str(atom.data[1]), atom.data[2], parts), values, functions)  # type: ignore[arg-type]
+    return total(app(atom.kind, *parts), values)
+
+
+def value_of(p: Poly, values: Values, functions: Mapping[str, Law] | None = None) -> Rational:
+    """The value of a polynomial of the normal form."""
+    result: Rational = 0
+    for mono, c in p.terms.items():
+        for atom, exponent in mono:
+            c = c * power(inside(atom, values, functions), exponent)
+        result += c
+    return result
 
 
 def _sum(t: Term, values: Values, functions: Mapping[str, Law] | None) -> Rational:
