@@ -152,17 +152,11 @@ def _examined(sheets: Sequence[str], options: Options, bar: _Bar) -> Iterator[Ex
             bar.show(number, path)
             yield examine(path, options.seconds, options.json, bar)
         return
-    from concurrent.futures import ProcessPoolExecutor
-    from itertools import repeat
+    from functools import partial
+    from multiprocessing import Pool
 
-    with ProcessPoolExecutor(min(options.jobs, len(sheets)), initializer=_ignore_interrupts) as pool:
-        try:
-            yield from pool.map(examine, sheets, repeat(options.seconds), repeat(options.json))
-        except KeyboardInterrupt:
-            for process in list((pool._processes or {}).values()):
-                process.terminate()
-            pool.shutdown(wait=False, cancel_futures=True)
-            raise
+    with Pool(min(options.jobs, len(sheets)), _ignore_interrupts) as pool:  # leaving it ends the children
+        yield from pool.imap(partial(examine, seconds=options.seconds, as_document=options.json), sheets)
 
 
 def _ignore_interrupts() -> None:
