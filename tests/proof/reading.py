@@ -23,6 +23,8 @@ POOL: dict[str, tuple[Rational, ...]] = {
     "bool": (0, 1),
 }
 EXPONENT_LIMIT = 400
+BIT_LIMIT = 5000
+DEPTH_LIMIT = 30  # of calls
 Values = Mapping[str, Rational]
 
 
@@ -48,6 +50,8 @@ def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -
         law = (functions or {})[t.name]
         if not all(_of_sort(v, p.sort) for p, v in zip(law.parameters, a, strict=True)):
             return ANY % 2 if t.sort == "bool" else ANY
+        if any(p.sort == "nat" and v > DEPTH_LIMIT for p, v in zip(law.parameters, a, strict=True)):
+            raise Unknown("too deep")
         inside = {p.name: v for p, v in zip(law.parameters, a, strict=True)}
         return total(law.formula.args[1], inside, functions)
     match op:
@@ -160,7 +164,7 @@ def _sum(t: Term, values: Values, functions: Mapping[str, Law] | None) -> Ration
 
 def power(base: Rational, exponent: Rational) -> Rational:
     whole = floor(exponent)
-    if whole != exponent or abs(whole) > EXPONENT_LIMIT:
+    if whole != exponent or abs(whole) * (base.numerator.bit_length() + base.denominator.bit_length()) > BIT_LIMIT:
         raise Unknown("a power that is no fraction, or too large")
     if base == 0 and whole < 0:
         return 0

@@ -13,6 +13,10 @@ P, Q = var("p", "bool"), var("q", "bool")
 I, J = var("i", "int"), var("j", "int")  # noqa: E741
 NAMES = (N, K, M, X, Y, Z)
 NUMBERS = (num(0), num(1), num(2), num(3), num(-1), num(-2), num(Fraction(1, 2)), num(Fraction(-2, 3)))
+OPERATORS = (
+    *("+", "+", "-", "*", "*", "/", "div", "mod", "^", "^", "base", "neg", "abs", "floor", "ceil"),
+    *("lg", "max", "min", "if", "sum", "fact", "binom", "call"),
+)
 COMPARISONS = ("<=", "<", "=", "!=", ">=", ">")
 
 
@@ -24,17 +28,15 @@ def number(rng: random.Random, depth: int, bound: tuple[Term, ...] = ()) -> Term
     def part() -> Term:
         return number(rng, depth - 1, bound)
 
-    op = rng.choice(
-        ["+", "+", "-", "*", "*", "/", "div", "mod", "^", "^", "base", "neg", "abs", "floor", "ceil", "lg", "max", "min", "if", "sum", "fact", "binom", "call"]
-    )
+    op = rng.choice(OPERATORS)
     match op:
         case "neg" | "abs" | "floor" | "ceil" | "lg" | "fact":
             return app(op, part())
         case "^":
             return app("^", part(), rng.choice((N, K, M, num(2), num(-1), num(3), app("-", N, num(1)))))
         case "base":
-            exponent = rng.choice((N, M, app("+", N, K), app("-", K, num(1)), app("*", num(2), M), app("div", N, num(2))))
-            return app("^", num(rng.choice((2, 3, 4, 6, Fraction(1, 2), -1, 0))), exponent)
+            exponents = (N, M, app("+", N, K), app("-", K, num(1)), app("*", num(2), M), app("div", N, num(2)))
+            return app("^", num(rng.choice((2, 3, 4, 6, Fraction(1, 2), -1, 0))), rng.choice(exponents))
         case "if":
             return Term("if", (formula(rng, depth - 1, bound), part(), part()))
         case "sum":
@@ -104,7 +106,7 @@ def _other(rng: random.Random, t: Term, names: tuple[Term, ...]) -> Term:
 
 
 def weakened(rng: random.Random, facts: list[Term], goal: Term) -> tuple[list[Term], Term]:
-    """The obligation with one name of a wider or another type everywhere, or without a fact, or with something changed."""
+    """The obligation with one name of another type everywhere, or without a fact, or with something changed."""
     names = _names([*facts, goal])
     kind = rng.random()
     if kind < 0.2 and facts:
