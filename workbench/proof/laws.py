@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from workbench.algebra.terms import ONE, TRUE, ZERO, Sort, Term, app, conjunction, num, var
+from workbench.algebra.terms import ONE, TRUE, ZERO, Term, app, conjunction, num, var
 
 
 @dataclass(frozen=True, slots=True)
@@ -206,8 +206,3 @@ def built_in_laws() -> tuple[Law, ...]:
     return (
         *_inverse_laws(), *_floor_laws(), *_power_laws(), *_logarithm_laws(), *_counting_laws(), *_order_laws(),
     )
-
-
-def law(name: str, sorts: dict[str, Sort], given: Term, formula: Term, source: str, lean: str) -> Law:
-    """A user's law, or a function's definition, in the same form."""
-    return Law(name, tuple(var(n, s) for n, s in sorts.items()), given, formula, source, lean)

@@ -59,7 +59,7 @@ def _rank(atom: Atom, rest: Poly, middle: frozenset[str]) -> int:
 def _shift(line: Line) -> bool:
     """An integer name that a fact bounds from below becomes the bound and a natural."""
     for number, row in line.state.rows.items():
-        if row.relation != ">=" or not row.deps:
+        if row.relation != ">=":
             continue
         for atom in sorted(row.poly.atoms):
             if atom.kind != "var" or not atom.integer or row.poly.coefficient(atom) != 1:
@@ -67,6 +67,8 @@ def _shift(line: Line) -> bool:
             if atom in line.state.inverted:
                 continue  # it was given this name so that its powers cancel
             bound = minus(of_atom(atom), row.poly)
+            if not row.deps and bound.constant is None:
+                continue  # the failed goal, or a case, says something of two names: neither is the other's lower bound
             if not bound.is_integer or (atom.nonneg and not (bound.terms and bound.nonneg)):
                 continue
             line.move(Shift(number, atom))
