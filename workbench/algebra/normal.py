@@ -43,13 +43,17 @@ class Algebra(Operators):
     def normal(self, term: Term, values: Mapping[Term, Poly] | None = None) -> Poly:
         """The normal form; `values` stand for variables of the term (laws and functions use it)."""
         memo: dict[Term, Poly] = self._memo if values is None else dict(values)
+        sums: dict[Term, tuple[Term, ...]] = {}
         stack = [term]
         while stack:
             t = stack[-1]
             if t in memo:
                 stack.pop()
                 continue
-            needed = self._canonical_sum(t).args if t.op == "sum" else t.args
+            if t.op == "sum" and t not in sums:
+                self.tick()
+                sums[t] = self._canonical_sum(t).args
+            needed = sums.get(t, t.args)
             missing = [a for a in needed if a not in memo]
             if missing:
                 stack.extend(missing)
