@@ -25,7 +25,7 @@ Proves every claim of every sheet below the paths: one line a claim, with the va
 
   --json       one JSON document on stdout, and nothing else there
   --jobs N     work on N sheets at a time
-  --seconds S  give up an obligation after that long (default 2)
+  --seconds S  give up an obligation after that long, in seconds of the processor (default 2)
   --plain      ASCII only, no progress bar
 
 Exit status: 0 all verified, 1 something open or refuted, 2 something unreadable or wrongly used.

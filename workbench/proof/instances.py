@@ -229,7 +229,6 @@ def _power_bounds(atom: Atom) -> Iterator[Move]:
     if not atom.data:
         yield Instance("sign of a power", (base, exponent))
         yield Instance("power at least one", (base, exponent))
-        yield Instance("chord of a power", (base, exponent))
     if atom.data == (2,) and exponent.nonneg:
         yield Instance("square below power", (plus(exponent, constant(4)),))
     for k in (0, 1, 2, 3):

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from time import monotonic
+from time import thread_time
 from typing import TypeAlias
 
 from workbench.algebra.normal import Algebra
@@ -37,7 +37,7 @@ class Effort:
     cancelled: Callable[[], bool] | None = None
 
     def tick(self) -> None:
-        if monotonic() > self.deadline or (self.cancelled is not None and self.cancelled()):
+        if thread_time() > self.deadline or (self.cancelled is not None and self.cancelled()):
             raise Stopped("the time for this obligation is up")
 
 

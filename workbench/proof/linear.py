@@ -18,7 +18,7 @@ from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from math import gcd, lcm
-from time import monotonic
+from time import thread_time
 from typing import Any, Final, TypeAlias
 
 from workbench.errors import UllageError
@@ -72,7 +72,7 @@ def find_combination(
     positive. No proper part of the rows returned has a contradiction (where there are no equations among them).
 
     None means that some values satisfy all rows, or that a limit was reached: more than `pivots` exchanges, or
-    `time.monotonic()` past `deadline`. With `raise_limits` the latter raises LimitReached instead.
+    `time.thread_time()` past `deadline`. With `raise_limits` the latter raises LimitReached instead.
     """
     try:
         found = _Dictionary(rows, pivots, deadline).contradiction()
@@ -252,7 +252,7 @@ class _Dictionary:
         self.pivots_left -= 1
         if self.pivots_left < 0:
             raise LimitReached("no answer within the pivots allowed")
-        if self.deadline is not None and monotonic() > self.deadline:
+        if self.deadline is not None and thread_time() > self.deadline:
             raise LimitReached("no answer within the time allowed")
 
     def _multipliers(self, line: Line, sign: int) -> dict[int, int]:
