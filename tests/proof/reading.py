@@ -32,8 +32,10 @@ class Unknown(Exception):
     """A value that is no fraction, or too large to work out."""
 
 
-def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -> Rational:
-    """The value; formulas are 1 or 0."""
+def total(
+    t: Term, values: Values, functions: Mapping[str, Law] | None = None, anything: int = ANY
+) -> Rational:
+    """The value; formulas are 1 or 0. `anything`: the natural that stands where fact and binom are not defined."""
     op = t.op
     if op == "num":
         return t.value
@@ -44,8 +46,8 @@ def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -
     if op == "sum":
         return _sum(t, values, functions)
     if op == "if":
-        return total(t.args[1 if total(t.args[0], values, functions) else 2], values, functions)
-    a = [total(x, values, functions) for x in t.args]
+        return total(t.args[1 if total(t.args[0], values, functions, anything) else 2], values, functions, anything)
+    a = [total(x, values, functions, anything) for x in t.args]
     if op == "call":
         law = (functions or {})[t.name]
         if not all(_of_sort(v, p.sort) for p, v in zip(law.parameters, a, strict=True)):
@@ -78,9 +80,9 @@ def total(t: Term, values: Values, functions: Mapping[str, Law] | None = None) -
         case "lg":
             return floor(a[0]).bit_length() - 1 if a[0] >= 1 else 0
         case "fact":
-            return factorial(_small(a[0])) if _of_sort(a[0], "nat") else ANY
+            return factorial(_small(a[0])) if _of_sort(a[0], "nat") else max(anything, 1)
         case "binom":
-            return comb(_small(a[0]), _small(a[1])) if all(_of_sort(x, "nat") for x in a) else ANY
+            return comb(_small(a[0]), _small(a[1])) if all(_of_sort(x, "nat") for x in a) else anything
         case "max" | "or":
             return max(a)
         case "min" | "and":

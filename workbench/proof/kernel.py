@@ -105,6 +105,8 @@ def moved(state: State, move: Move, laws: Mapping[str, Law]) -> State:
             return state.instance(laws[name], args)
         case SumLaw(kind, atom, antidifference):
             return state.sum_law(kind, atom, antidifference)
+        case _:
+            raise NotProved("no such move")
 
 
 # ---------------------------------------------------------------- what is proved
@@ -174,6 +176,8 @@ def check(
                 if isinstance(move, Instance) and move.law in laws and laws[move.law].lean:
                     leaned.add(laws[move.law].lean)
                 work.append((moved(state, move, laws), rest))
+            case _:
+                raise NotProved("no such step")
     return Proved(_MINT, tuple(facts), goal, used, frozenset(leaned), certificate)
 
 
