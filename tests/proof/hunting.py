@@ -269,11 +269,12 @@ def main() -> int:
     asked = parser.parse_args()
     tally = Tally()
     with ProcessPoolExecutor(asked.jobs) as pool:
-        for part in pool.map(_both, range(asked.seed, asked.seed + asked.tries), chunksize=50):
+        for done, part in enumerate(pool.map(_both, range(asked.seed, asked.seed + asked.tries), chunksize=50), 1):
             tally.add(part)
-    print(dict(tally.counts))
-    for wrong in tally.wrong:
-        print("FALSE:", wrong)
+            for wrong in part.wrong:
+                print("FALSE:", wrong, flush=True)
+            if done % 1000 == 0 or done == asked.tries:
+                print(done, dict(tally.counts), flush=True)
     return 1 if tally.wrong else 0
 
 

@@ -24,7 +24,7 @@ POOL: dict[str, tuple[Rational, ...]] = {
 }
 EXPONENT_LIMIT = 400
 BIT_LIMIT = 5000
-DEPTH_LIMIT = 30  # of calls
+DEPTH_LIMIT = 14  # of calls
 Values = Mapping[str, Rational]
 
 
