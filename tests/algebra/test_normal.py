@@ -153,6 +153,8 @@ EDGES: list[Term] = [
     app("mod", X, num(-2)), app("^", num(0), M), app("^", num(0), num(-1)), app("^", num(0), num(0)),
     app("^", X, num(-2)), app("^", X, num(0)), app("^", X, M), app("^", num(-2), M), app("^", num(6), M),
     app("^", num(Fraction(2, 3)), app("-", M, num(2))), app("^", num(1), X), app("^", num(4), app("*", num(3), M)),
+    app("^", num(2), app("/", M, num(2))),
+    app("floor", app("/", app("+", app("*", num(2), app("floor", X)), num(1)), num(3))),
     app("^", app("^", num(2), N), K), app("^", num(2), app("*", N, K)), app("^", X, num(30)),
     app("lg", X), app("lg", num(Fraction(7, 2))), app("lg", app("^", num(2), N)), app("lg", app("^", num(2), M)),
     app("lg", app("*", num(8), app("^", num(4), N))), app("lg", app("*", num(3), app("^", num(2), N))),
@@ -199,6 +201,10 @@ SAME: list[tuple[Term, Term]] = [
     (app("^", num(4), N), app("^", app("^", num(2), N), num(2))),
     (app("^", num(6), N), app("*", app("^", num(2), N), app("^", num(3), N))),
     (app("^", num(2), app("-", N, num(1))), app("/", app("^", num(2), N), num(2))),
+    (
+        app("^", num(2), app("+", M, num(Fraction(7, 2)))),
+        app("*", app("*", num(8), app("^", num(2), M)), app("^", num(2), num(Fraction(1, 2)))),
+    ),
     (app("/", num(1), app("*", X, Y)), app("*", app("/", num(1), X), app("/", num(1), Y))),
     (
         app("/", num(1), app("+", app("*", N, N), N)),

@@ -425,8 +425,6 @@ def _tightened(p: Poly) -> Poly:
     if not p.is_integer:
         return primitive(p)[0]
     p = scaled(p, denominator(p))
-    if not all(a.integer and e > 0 for mono in p.terms for a, e in mono):
-        return primitive(p)[0]
     divisor = gcd(*(int(c) for mono, c in p.terms.items() if mono != UNIT))
     rest = Poly({mono: int(c) // divisor for mono, c in p.terms.items() if mono != UNIT})
     return plus(rest, constant(int(p.terms.get(UNIT, 0)) // divisor))

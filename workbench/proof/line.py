@@ -94,6 +94,8 @@ class Line:
     def proves(self, atom: Atom, holds: bool) -> bool:
         """Whether the rows prove that the indicator holds (or that it does not); the line then goes on with that."""
         self.effort.tick()
+        if not atom.idempotent or atom in self.state.images:
+            return False  # decided meanwhile
         other = self.branch(self.state.assume(atom, not holds))
         other.compare_three_ways()
         leaf = linear_leaf(other.state, self.effort.deadline)
