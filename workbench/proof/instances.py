@@ -11,13 +11,15 @@ from fractions import Fraction
 from itertools import product
 from math import comb
 
-from workbench.algebra.polynomial import UNITY, Atom, Poly, constant, minus, of_atom, plus, scaled, times
+from workbench.algebra.polynomial import NOTHING, UNITY, Atom, Poly, constant, minus, of_atom, plus, scaled, times
 from workbench.algebra.terms import Term
 from workbench.proof.kernel import Instance, Move, State, SumLaw
 from workbench.proof.laws import Law
 
 # Pairs of atoms that one stage relates by a law of two arguments.
 PAIR_LIMIT = 24
+# Other floors that a quotient is compared with.
+QUOTIENT_LIMIT = 3
 # Products of two atoms whose squares are brought in.
 SQUARE_LIMIT = 8
 # Sums of up to one term more than this are written out.
@@ -218,7 +220,7 @@ def bounding(atoms: Iterable[Atom]) -> Iterator[Move]:
                 yield Instance("sign of a quotient", atom.parts)
                 yield Instance("quotient", atom.parts)
             case "floor":
-                yield from _symbolic_division(atom)
+                yield from _symbolic_division(atom, atoms)
     yield from _monotone(atoms)
 
 
@@ -235,16 +237,17 @@ def _power_bounds(atom: Atom) -> Iterator[Move]:
         yield Instance("tangent of a power", (base, exponent, constant(k)))
 
 
-def _symbolic_division(atom: Atom) -> Iterator[Move]:
-    """floor(x/y): what is left of x."""
+def _symbolic_division(atom: Atom, atoms: Iterable[Atom]) -> Iterator[Move]:
+    """floor(x/y): what is left of x; and whether it is 0, 1, what another floor is, or one more."""
     inner = atom.parts[0]
     divisors = [a.parts[0] for a in sorted(inner.atoms) if a.kind == "inv"]
     divisors += [of_atom(a) for a in sorted({a for mono in inner.terms for a, e in mono if e == -1})]
+    others = [of_atom(a) for a in atoms if a.kind == "floor" and a is not atom][:QUOTIENT_LIMIT]
     for divisor in divisors:
         dividend = _multiplied(inner, divisor)
-        yield Instance("quotient of less", (dividend, divisor))
-        yield Instance("quotient of once as much", (dividend, divisor))
         yield Instance("division", (dividend, divisor))
+        for q in (NOTHING, UNITY, *others, *(plus(q, UNITY) for q in others)):
+            yield Instance("whole quotient", (dividend, divisor, q))
 
 
 def _multiplied(p: Poly, divisor: Poly) -> Poly:

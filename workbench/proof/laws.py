@@ -78,6 +78,7 @@ POWERS = "laws of exponents, common knowledge"
 
 def _inverse_laws() -> list[Law]:
     x, y = _reals("x", "y")
+    q, = _integers("q")
     inverse = app("/", ONE, x)
     return [
         Law("quotient", (x,), app("!=", x, ZERO), _eq(_times(x, inverse), ONE), DEFINITION),
@@ -90,10 +91,9 @@ def _inverse_laws() -> list[Law]:
             _both(_le(_times(y, app("div", x, y)), x), _lt(x, _plus(_times(y, app("div", x, y)), y))),
             CONCRETE,
         ),
-        Law("quotient of less", (x, y), _both(_le(ZERO, x), _lt(x, y)), _eq(app("div", x, y), ZERO), CONCRETE),
         Law(
-            "quotient of once as much", (x, y), _both(_le(y, x), _lt(x, _times(TWO, y))),
-            _eq(app("div", x, y), ONE), CONCRETE,
+            "whole quotient", (x, y, q), _both(_le(_times(q, y), x), _lt(x, _times(_plus(q, ONE), y))),
+            _eq(app("div", x, y), q), CONCRETE,
         ),
     ]
 

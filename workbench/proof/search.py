@@ -69,7 +69,7 @@ class Hints:
     middle: frozenset[str] = frozenset()
 
 
-# Names asked whether they are 0 before one of them is split.
+# Conditions that are asked of the rows before one of them is split.
 DECIDED_LIMIT = 4
 
 
@@ -289,6 +289,9 @@ class Search:
         """Facts not decided yet, remainders of names under floors, small values of naturals."""
         if depth >= DEPTH_LIMIT:
             return None
+        for atom in list(islice(undecided(line), DECIDED_LIMIT)):
+            if line.decide(atom):
+                return self._solve(line.branch(), depth + 1)
         for atom in undecided(line):
             return self._split(line, atom, lambda b: self._solve(b, depth + 1))
         return self._by_remainder(line, depth) or self._by_value(line, depth)
