@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 
 from workbench.algebra.terms import ONE, Sort, Term, add, app, sub, var, variables
 from workbench.errors import Span
-from workbench.program.domains import is_integer, of_sort
+from workbench.program.domains import declared_sort, is_integer
 from workbench.program.names import Locals, bound_names
 from workbench.program.priced import (
     Acquire,
@@ -92,7 +92,7 @@ class Body:
                 return self._call(s.routine, s.arguments, None, None, names, s.span)
             case tree.Note():
                 value = names.term(s.value)
-                sort = _sort_of(value)
+                sort = declared_sort(value)
                 names.variables[s.name] = sort
                 return (Assign(s.name, sort, value, s.span, is_note=True),)
             case tree.If():
@@ -227,7 +227,7 @@ class Body:
         return not any(v.name in changing for v in variables(term))
 
     def _noted(self, name: str, value: Term, names: Locals, before: list[Statement], span: Span) -> Term:
-        sort = _sort_of(value)
+        sort = declared_sort(value)
         names.variables[name] = sort
         before.append(Assign(name, sort, value, span, is_note=True))
         return var(name, sort)
@@ -271,17 +271,8 @@ def _held(holds: Sequence[tuple[str, Term]], body: Block, span: Span) -> Block:
 def _last_value(high: Term, inclusive: bool) -> Term:
     """The last integer that passes the test."""
     if inclusive:
-        return high if is_integer(high) else app("floor", high)
-    return sub(high, ONE) if is_integer(high) else sub(app("ceil", high), ONE)
-
-
-def _sort_of(value: Term) -> Sort:
-    """The narrowest sort that the value plainly has."""
-    if value.is_formula:
-        return "bool"
-    if of_sort(value, "nat").op == "true":
-        return "nat"
-    return "int" if is_integer(value) else "real"
+        return high if is_integer(high, declared=True) else app("floor", high)
+    return sub(high, ONE) if is_integer(high, declared=True) else sub(app("ceil", high), ONE)
 
 
 def _assigned(block: tree.Block) -> frozenset[str]:

@@ -115,7 +115,10 @@ def _arguments(t: Term, functions: Mapping[str, Function]) -> list[tuple[Term, s
 
 
 def of_sort(term: Term, sort: Sort) -> Term:
-    """The formula: term is a value of the sort. TRUE where that is plain to see."""
+    """The formula: term is a value of the sort. TRUE where that is plain to see.
+
+    What a sheet's function yields is never plain: whoever relies on its type leans on its definition.
+    """
     if sort in ("real", "bool"):
         return TRUE
     parts = []
@@ -131,8 +134,18 @@ def nonnegative(term: Term) -> Term:
     return TRUE if _never_negative(term) else app("<=", ZERO, term)
 
 
-def is_integer(term: Term) -> bool:
-    """Whether the term is plainly an integer wherever it is defined."""
+def declared_sort(term: Term) -> Sort:
+    """The narrowest sort that the term has, if functions yield what they are declared to."""
+    if term.is_formula:
+        return "bool"
+    if not is_integer(term, declared=True):
+        return "real"
+    return "nat" if _never_negative(term, declared=True) else "int"
+
+
+def is_integer(term: Term, *, declared: bool = False) -> bool:
+    """Whether the term is plainly an integer wherever it is defined. With `declared` functions count as of their types.
+    """
     work = [term]
     while work:
         t = work.pop()
@@ -141,7 +154,7 @@ def is_integer(term: Term) -> bool:
                 if not isinstance(t.value, int):
                     return False
             case "var" | "call":
-                if t.sort not in ("nat", "int"):
+                if t.sort not in ("nat", "int") or (t.op == "call" and not declared):
                     return False
             case "+" | "-" | "*" | "neg" | "abs" | "max" | "min" | "mod":
                 work.extend(t.args)
@@ -150,7 +163,7 @@ def is_integer(term: Term) -> bool:
             case "sum":
                 work.append(t.args[3])
             case "^":
-                if not _never_negative(t.args[1]):
+                if not _never_negative(t.args[1], declared=declared):
                     return False
                 work.append(t.args[0])
             case "div" | "floor" | "ceil" | "lg" | "fact" | "binom":
@@ -160,8 +173,8 @@ def is_integer(term: Term) -> bool:
     return True
 
 
-def _never_negative(term: Term) -> bool:
-    """Whether the term is plainly never negative wherever it is defined."""
+def _never_negative(term: Term, *, declared: bool = False) -> bool:
+    """Whether the term is plainly never negative wherever it is defined; `declared` as for `is_integer`."""
     work = [term]
     while work:
         t = work.pop()
@@ -170,12 +183,12 @@ def _never_negative(term: Term) -> bool:
                 if t.value < 0:
                     return False
             case "var" | "call":
-                if t.sort != "nat":
+                if t.sort != "nat" or (t.op == "call" and not declared):
                     return False
             case "+" | "*" | "/" | "div" | "min":
                 work.extend(t.args)
             case "max":
-                if not any(_never_negative(a) for a in t.args):
+                if not any(_never_negative(a, declared=declared) for a in t.args):
                     return False
             case "if":
                 work.extend(t.args[1:])

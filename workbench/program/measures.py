@@ -20,7 +20,7 @@ CANDIDATE_LIMIT = 40
 
 @dataclass(frozen=True, slots=True)
 class Site:
-    """`callee` is the specification that begins anew there: a routine's name, or for a loop its own label.
+    """`callee` is the specification that begins anew there: a routine's name, or with `once_more` a loop's own label.
 
     `make(own, other)` gives the obligations where the specification's own measure is `own` (over its start names)
     and the one of what begins anew is `other` (over that one's start names).
@@ -30,6 +30,7 @@ class Site:
     specification: str
     callee: str
     make: Callable[[Measure, Measure], tuple[Obligation, ...]]
+    once_more: bool = False
 
 
 def owed(own: Measure, other: Measure) -> list[tuple[Term, str]]:
@@ -47,8 +48,8 @@ def owed(own: Measure, other: Measure) -> list[tuple[Term, str]]:
 
 
 def falls(own: Measure, other: Measure) -> Term:
-    """other < own, lexicographically; FALSE for tuples of unlike length."""
-    if len(own) != len(other):
+    """other < own, lexicographically; FALSE for tuples of unlike length, and for empty ones."""
+    if not own or len(own) != len(other):
         return FALSE
     result = app("<", other[-1], own[-1])
     for mine, its in zip(reversed(own[:-1]), reversed(other[:-1]), strict=True):

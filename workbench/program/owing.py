@@ -45,7 +45,7 @@ class Owing:
         self.ground = Ground("", 0, {})
         self.silent = False
         self._serial = 0
-        self._seen: set[tuple[str, str, Term, tuple[Term, ...]]] = set()
+        self._seen: set[tuple[object, ...]] = set()
 
     def amount(self, p: Path, amount: Term, span: Span) -> None:
         self.domain(p, amount, span)
@@ -73,9 +73,9 @@ class Owing:
         if self.silent or goal.op == "true":
             return
         absolute = p.value(goal)
-        formulas = tuple(f.formula for f in p.facts)
-        key = (self.ground.label, kind + (claim or ""), absolute, formulas)
-        if key in self._seen or (absolute in formulas and not also_evident):
+        known = tuple((f.formula, f.lean) for f in p.facts)
+        key = (self.ground.label, kind + (claim or ""), absolute, known, p.leans)
+        if key in self._seen or ((absolute, None) in known and not also_evident):
             return
         self._seen.add(key)
         events, start = p.events, len(p.facts) - len(summary(p.events).facts)
@@ -103,7 +103,7 @@ class Owing:
             goal = specifying.instantiated(formula, before, end.value)
             for condition in domain_conditions(formula, self.program.functions):
                 owed = specifying.instantiated(condition.formula, before, end.value)
-                if owed not in {f.formula for f in end.facts}:
+                if (owed, None) not in {(f.formula, f.lean) for f in end.facts}:
                     self._add(
                         "domain",
                         claim.label,
@@ -186,7 +186,7 @@ class Owing:
             last = [(measures.falls(own, new), "the measure falls")]
             return first + self._measured(end, last, spec.span, f"once round {spec.label}", spec.label)
 
-        self.sites.append(measures.Site(self.routine.name, spec.label, spec.label, make))
+        self.sites.append(measures.Site(self.routine.name, spec.label, spec.label, make, once_more=True))
 
     def _measured(
         self, p: Path, owed: list[tuple[Term, str]], span: Span, words: str, label: str

@@ -95,7 +95,7 @@ def call_event(known: Names, call: Call, callee: Routine, own: bool) -> Event:
             updates[var(call.target, call.target_sort)] = result
     facts = _claim_facts(callee.spec, before, updates, callee.name, "", f"{callee.name}")
     for s in known.program.states.values():
-        if s.condition is not None and s.name in callee.changed:
+        if s.condition is not None and names(s.condition) & callee.changed:
             where = substitute(s.condition, {known.present(n): f for n, f in fresh.items()})
             facts.append(Fact(where, f"what holds of {s.name} after every call", Lean(callee.name, "", "")))
     facts += resource_facts(known, callee.changed, {n: known.present(n) for n in fresh}, fresh)

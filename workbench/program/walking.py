@@ -82,7 +82,7 @@ class Walk:
         for end in self._walk(self.routine.body, [start]):
             self._only_changes(end, self.routine.changed, self._sight())
             for s in self.program.states.values():
-                if s.condition is not None and s.name in self.routine.changed:
+                if s.condition is not None and names(s.condition) & self.routine.changed:
                     self.owing.owe(end, "range", s.condition, spec.span, f"what holds of {s.name} at the end")
             self.owing.claims(end, spec)
 
@@ -143,8 +143,7 @@ class Walk:
     def _assign(self, s: Assign, p: Path) -> Path:
         self._declare(s.target, s.sort)
         self.owing.domain(p, s.value, s.span)
-        if not s.is_note:
-            self.owing.range(p, s.value, s.sort, s.span, f"{s.target} is {_article(s.sort)}")
+        self.owing.range(p, s.value, s.sort, s.span, f"{s.target} is {_article(s.sort)}")
         move = "name the present value" if s.is_note else "substitute the statement"
         words = f"{s.target} {'=' if s.is_note else ':='} {show(s.value)}"
         return p.then(Event(move, words, s.span, {var(s.target, s.sort): s.value}))
@@ -218,10 +217,9 @@ class Walk:
         if s.target is not None and s.target_sort is not None:
             self._declare(s.target, s.target_sort)
         p = p.then(specifying.call_event(self.names, s, callee, own=s.routine == self.routine.name))
-        if s.target is not None and s.target_sort not in (None, callee.result, "real"):
-            self.owing.range(
-                p, self.names.present(s.target), s.target_sort, s.span, f"{s.target} is {_article(s.target_sort)}"
-            )
+        if s.target is not None and s.target_sort is not None:
+            returned = p.value(var(s.target, s.target_sort))  # of the callee's sort, not yet of the target's
+            self.owing.range(p, returned, s.target_sort, s.span, f"{s.target} is {_article(s.target_sort)}")
         return p
 
     # -------------------------------------------------------------- branches

@@ -48,8 +48,8 @@ class Choosing:
 
     def _loops(self, owed: Owed) -> list[Finding]:
         found: list[Finding] = []
-        for label in dict.fromkeys(s.specification for s in owed.sites if s.callee == s.specification):
-            sites = [s for s in owed.sites if s.callee == label == s.specification]
+        for label in dict.fromkeys(s.specification for s in owed.sites if s.once_more):
+            sites = [s for s in owed.sites if s.once_more and s.callee == label]
             written = owed.specifications[label].measure
             tries = [written] if written is not None else loop_candidates(owed.loops[label])
             found += self._first_that_falls(({label: m} for m in tries), sites, written is not None)
@@ -61,7 +61,7 @@ class Choosing:
             s
             for name in group
             for s in self.owed[name].sites
-            if s.callee in self.groups[name] and s.callee != s.specification
+            if not s.once_more and s.callee in self.groups[name]
         ]
         options = []
         for name in group:
@@ -97,7 +97,7 @@ class Choosing:
     def _under(self, measures: Mapping[str, Measure], sites: Sequence[Site], *, to_the_end: bool) -> list[Finding]:
         findings: list[Finding] = []
         for site in sites:
-            own = measures[site.specification if site.callee == site.specification else site.routine]
+            own = measures[site.specification if site.once_more else site.routine]
             for o in site.make(own, measures[site.callee]):
                 findings.append(self.decide(o))
                 if findings[-1].proved is None and not to_the_end:
