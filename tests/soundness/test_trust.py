@@ -125,3 +125,25 @@ end
 
 def test_a_recursion_without_parameters_has_no_measure() -> None:
     assert verdicts("routine forever()\n  claim nonsense: false\nis\n  forever()\nend\n")["forever.nonsense"] == "open"
+
+
+def test_a_measure_over_a_gauge_means_its_level_at_the_start_of_the_routine() -> None:
+    found = verdicts("""
+routine forever()
+  given heap = floor(heap)
+  given heap >= 0
+  claim nonsense: false
+  measure heap
+is
+  acquire 1 heap
+  stage inside
+    given heap = floor(heap)
+    given heap >= 1
+    claim nonsense: false
+  is
+    release 1 heap
+    forever()
+  end
+end
+""")
+    assert found["forever.nonsense"] == "open"

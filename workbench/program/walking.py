@@ -383,9 +383,10 @@ class Walk:
         facts += [replace(f, formula=substitute(f.formula, renamed)) for f in shared]
         seen = {n for n in sight if n not in changed} | set(self.program.constants)
         parameters = [var(q.name, q.sort) for q in self.routine.parameters]
+        shared_names = [n for n in sorted(sight) if n in self.program.states or self.names.is_resource(n)]
         entry = {
             q: substitute(self.owing.ground.entry.get(q, q), renamed)
-            for q in (*parameters, *map(self.names.present, self.program.states))
+            for q in (*parameters, *map(self.names.present, shared_names))
         }
         if self.recursive_with:
             seen |= {entry[q].name for q in parameters}
