@@ -147,3 +147,11 @@ is
 end
 """)
     assert found["forever.nonsense"] == "open"
+
+
+def test_what_a_routine_calls_must_be_in_order_wherever_the_call_stands() -> None:
+    bad = "routine bad() is\n  spend -5 time\nend\nroutine middle() is\n  bad()\nend\n"
+    places = ("middle()", "for i from 0 to 3 do bad() end", "stage s is bad() end", "either bad() else skip end")
+    for place in places:
+        found = verdicts(bad + f"routine top()\n  claim grows: spent time >= 0\nis\n  {place}\nend\n")
+        assert found["top.grows"] in ("open", "refuted"), place

@@ -262,7 +262,9 @@ class _Judge:
         while True:
             before = len(fallen)
             for name, r in self.routines.items():
-                if not all(self._stands(f, fallen) for f in r.side):
+                # What a routine calls may stand in a loop or stage that owes nothing itself.
+                calls = self.program.routines[name].calls
+                if not self._own_side_stands(r, fallen) or any(Lean(c, "", "") in fallen for c in calls):
                     fallen.add(Lean(name, "", ""))
                 for key, findings in r.claims.items():
                     bad_side = Lean(name, "", "") in fallen
@@ -270,6 +272,9 @@ class _Judge:
                         fallen.add(Lean(*key))
             if len(fallen) == before:
                 return fallen
+
+    def _own_side_stands(self, r: _Routine, fallen: set[Lean]) -> bool:
+        return all(self._stands(f, fallen) for f in r.side)
 
     def _stands(self, finding: Finding, fallen: set[Lean]) -> bool:
         return finding.proved is not None and not any(self._has_fallen(lean, fallen) for lean in finding.leans)
@@ -350,8 +355,9 @@ class _Judge:
                 hinted = {f"law {u.law}" for u in f.obligation.using} & self._fallen_mathematics()
                 leans.update(dict.fromkeys(sorted(hinted)))
             name = r.owed.routine.name
-            if Lean(name, "", "") in fallen:
-                leans[f"the side conditions of {name}"] = None
+            for other in sorted({name} | self._callees(name)):
+                if not self._own_side_stands(self.routines[other], fallen):
+                    leans[f"the side conditions of {other}"] = None
         return ClaimReport(claim, key[1], verdict, tuple(leans), tuple(decided))
 
     def _bad_leans(self, finding: Finding, fallen: set[Lean]) -> list[str]:
