@@ -11,19 +11,19 @@ from workbench.proof.search import Search
 
 def test_nothing_that_the_search_proves_is_falsified() -> None:
     tally = Tally()
-    for seed in range(200):
+    for seed in range(120):
         tally.add(searched(seed, 0.03))
     assert tally.wrong == []
-    assert tally.counts["proved"] >= 30
+    assert tally.counts["proved"] > 20
 
 
 def test_forged_certificates_prove_nothing_false() -> None:
     tally = Tally()
-    for seed in range(60):
+    for seed in range(25):
         tally.add(forged(seed, 0.5, 8))
     assert tally.wrong == []
-    assert tally.counts["refused"] >= 200
-    assert tally.counts["passed"] >= 20
+    assert tally.counts["refused"] > 100
+    assert tally.counts["passed"] > 10
 
 
 def test_the_hunt_would_notice_a_fact_that_is_used_and_not_counted() -> None:

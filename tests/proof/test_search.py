@@ -26,13 +26,13 @@ def test_true_obligation_is_proved(obligation: Obligation) -> None:
     found = attempt(obligation)
     assert found.proved is not None, found.why
     kept = [f for i, f in enumerate(obligation.facts) if i in found.proved.used]
-    assert falsified(kept, obligation.goal, 20, functions=functions()) is None, "a fact is used and not counted"
+    assert falsified(kept, obligation.goal, 12, functions=functions()) is None, "a fact is used and not counted"
 
 
 @pytest.mark.parametrize("obligation", false_ones(), ids=lambda o: o.name)
 def test_false_obligation_is_not_proved(obligation: Obligation) -> None:
-    assert falsified(obligation.facts, obligation.goal, 20_000, functions=functions()) is not None
-    found = attempt(obligation, seconds=0.3)
+    assert falsified(obligation.facts, obligation.goal, 5_000, functions=functions()) is not None
+    found = attempt(obligation, seconds=0.2)
     assert found.proved is None
     assert found.why
 
