@@ -54,12 +54,11 @@ def resource_facts(
     return facts
 
 
-def start_facts(known: Names, changed: Iterable[str]) -> list[Fact]:
-    """peak >= level, at the start of a specification."""
-    program = known.program
-    roots = sorted({name.partition(".")[0] for name in changed} & set(program.gauges))
+def start_facts(known: Names) -> list[Fact]:
+    """peak >= level of every gauge, at the start of a specification."""
     return [
-        Fact(app("<=", known.present(g), known.present(f"{g}.peak")), f"{g}.peak is no less than {g}") for g in roots
+        Fact(app("<=", known.present(g), known.present(f"{g}.peak")), f"{g}.peak is no less than {g}")
+        for g in sorted(known.program.gauges)
     ]
 
 

@@ -74,7 +74,7 @@ class Walk:
         spec = self.routine.spec
         self.specifications[""] = spec
         known = [*constant_facts(self.program), *self._states()]
-        start = Path(facts=(*known, *specifying.start_facts(self.names, self.routine.changed)))
+        start = Path(facts=(*known, *specifying.start_facts(self.names)))
         start = self._with_givens(start, spec)
         self.start = tuple(f.formula for f in start.facts)
         for component in spec.measure or ():
@@ -391,7 +391,7 @@ class Walk:
         if self.recursive_with:
             seen |= {entry[q].name for q in parameters}
         facts = _connected(facts, seen)
-        facts += specifying.start_facts(self.names, changed)
+        facts += specifying.start_facts(self.names)
         middle = frozenset().union(*(p.middle for p in paths))
         leans = frozenset().union(*(p.leans for p in paths))
         return Path(facts=tuple(facts), middle=middle, leans=leans), entry
