@@ -19,11 +19,11 @@ def test_nothing_that_the_search_proves_is_falsified() -> None:
 
 def test_forged_certificates_prove_nothing_false() -> None:
     tally = Tally()
-    for seed in range(25):
+    for seed in range(18):
         tally.add(forged(seed, 0.5, 8))
     assert tally.wrong == []
-    assert tally.counts["refused"] > 100
-    assert tally.counts["passed"] > 10
+    assert tally.counts["refused"] > 80
+    assert tally.counts["passed"] > 8
 
 
 def test_the_hunt_would_notice_a_fact_that_is_used_and_not_counted() -> None:

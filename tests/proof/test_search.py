@@ -11,7 +11,8 @@ import pytest
 from tests.proof.obligations import Obligation, false_ones, functions, laws, term, true_ones
 from tests.proof.reading import falsified
 from workbench.algebra.normal import Algebra
-from workbench.algebra.terms import Term, app, num, summation, var
+from workbench.algebra.terms import TRUE, Term, app, num, summation, var
+from workbench.proof.laws import Law
 from workbench.proof.search import Attempt, Hints, Search
 
 ALGEBRA = Algebra()  # one serves all, as one serves a sheet
@@ -92,6 +93,7 @@ HOSTILE: dict[str, tuple[list[Term], Term]] = {
     "a sum squared sixty times": ([], app("=", over(lambda t: app("+", app("*", t, t), X), REALS[1], 60), N)),
     "fifty powers of powers": ([], app("<=", over(lambda t: app("^", num(2), t), N, 50), NATURALS[1])),
     "three hundred floors of products": ([], app("<=", over(lambda t: app("floor", app("*", t, X)), REALS[1], 300), N)),
+    "ninety floors of products": ([], app("<=", over(lambda t: app("floor", app("*", t, X)), REALS[1], 90), N)),
     "sixty nested sums": (
         [], app("<=", over(lambda t: summation(I, num(0), N, app("+", t, I)), REALS[1], 60), NATURALS[1]),
     ),
@@ -131,6 +133,14 @@ def test_search_stops_in_time(name: str) -> None:
     found = Search(Algebra(), laws(), functions(), seconds=0.5).prove(facts, goal)
     assert thread_time() - began < 1.0
     assert found.proved is None and found.why
+
+
+def test_a_law_too_large_to_match_is_passed_over() -> None:
+    large = over(lambda t: app("*", t, t), num(3), 60)
+    law = Law("large", (N,), TRUE, app("<=", N, large), "a sheet", "law large")
+    search = Search(Algebra(), {**laws(), "large": law}, functions(), seconds=0.5)
+    assert search.prove([], app("<=", num(0), app("lg", N))).proved is not None
+    assert search.prove([], app("<=", app("lg", N), num(7))).proved is None
 
 
 def test_search_stops_when_it_is_cancelled() -> None:

@@ -203,10 +203,10 @@ def simulated(seed: int) -> Counter[str]:
 
 def test_what_a_state_says_is_true_of_values_that_satisfy_its_facts() -> None:
     made: Counter[str] = Counter()
-    for seed in range(120):
+    for seed in range(90):
         made += simulated(seed)
     assert set(made) == set(KINDS)
-    assert sum(made.values()) > 500
+    assert sum(made.values()) > 300
 
 
 def test_the_simulation_would_notice_what_is_false() -> None:

@@ -14,7 +14,7 @@ from itertools import islice
 from time import thread_time
 
 from workbench.algebra.normal import Algebra
-from workbench.algebra.polynomial import Atom, Poly, TooLargeToNormalize, minus, of_atom
+from workbench.algebra.polynomial import NOTHING, Atom, Poly, TooLargeToNormalize, minus, of_atom
 from workbench.algebra.terms import COMPARISONS, Term
 from workbench.proof import instances
 from workbench.proof.kernel import (
@@ -91,7 +91,7 @@ class Search:
         self.seconds = seconds
         self.cancelled = cancelled
         self.user_laws = tuple(law for law in laws.values() if law.lean.startswith("law "))
-        self._formulas: dict[str, Poly] = {law.name: algebra.normal(law.formula) for law in self.user_laws}
+        self._formulas: dict[str, Poly] | None = None
 
     # -------------------------------------------------------------- entry
     def prove(self, facts: Sequence[Term], goal: Term, hints: Hints | None = None) -> Attempt:
@@ -250,7 +250,7 @@ class Search:
             return leaf
         atoms = instances.deep_atoms(line.state)
         moves = [
-            *instances.matching(self.user_laws, atoms, self._formulas),
+            *instances.matching(self.user_laws, atoms, self._patterns()),
             *instances.bounding(atoms),
             *instances.squares(line.state),
         ]
@@ -258,6 +258,17 @@ class Search:
             line.use(move)
         tidy(line)
         return line.leaf() or product_leaf(line.state, line.effort.deadline)
+
+    def _patterns(self) -> dict[str, Poly]:
+        """What the user's laws say, where it is not too large to match anything."""
+        if self._formulas is None:
+            self._formulas = {}
+            for law in self.user_laws:
+                try:
+                    self._formulas[law.name] = self.algebra.normal(law.formula)
+                except TooLargeToNormalize:
+                    self._formulas[law.name] = NOTHING
+        return self._formulas
 
     def _invert(self, line: Line) -> Leaf | None:
         """1/y for y that is known not to be 0: as a power, after y has got a name of its own if it is a sum."""
