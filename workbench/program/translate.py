@@ -5,8 +5,24 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from functools import reduce
+from itertools import chain, count
 
-from workbench.algebra.terms import FALSE, TRUE, Sort, Term, add, app, call, mul, num, sub, summation, var
+from workbench.algebra.terms import (
+    FALSE,
+    TRUE,
+    Sort,
+    Term,
+    add,
+    app,
+    call,
+    mul,
+    num,
+    sub,
+    substitute,
+    summation,
+    var,
+    variables,
+)
 from workbench.sheet import tree
 
 # (name, primed) -> the term that stands for it
@@ -43,15 +59,8 @@ def translate(expr: tree.Expr, lookup: Lookup, words: Vocabulary) -> Term:
             return Term("if", tuple(parts), sort="bool" if parts[1].is_formula else "real")
         case tree.Application(name, arguments):
             return _applied(name, [translate(a, lookup, words) for a in arguments], words)
-        case tree.Summation(body, variable, low, high):
-            bound = var(variable, "int")
-
-            def inside(name: str, primed: bool) -> Term:
-                return bound if name == variable and not primed else lookup(name, primed)
-
-            return summation(
-                bound, translate(low, lookup, words), translate(high, lookup, words), translate(body, inside, words)
-            )
+        case tree.Summation():
+            return _sum(expr, lookup, words)
         case tree.Short():
             return _short(expr, lookup, words)
 
@@ -67,6 +76,23 @@ def _chain(expr: tree.Binary, lookup: Lookup, words: Vocabulary) -> Term:
     for op, right in reversed(links):
         result = app(op, result, translate(right, lookup, words))
     return result
+
+
+def _sum(expr: tree.Summation, lookup: Lookup, words: Vocabulary) -> Term:
+    """The sum. What a name stands for may hold the bound variable's name, as an argument of a call does in the price of
+    that call: then the bound variable is called otherwise.
+    """
+    stand_in = var(f"{expr.variable}@", "int")  # no sheet can write an @
+
+    def inside(name: str, primed: bool) -> Term:
+        return stand_in if name == expr.variable and not primed else lookup(name, primed)
+
+    body = translate(expr.body, inside, words)
+    taken = {v.name for v in variables(body)}
+    others = (f"{expr.variable}_{i}" for i in count(1))
+    bound = var(next(n for n in chain((expr.variable,), others) if n not in taken), "int")
+    low, high = translate(expr.low, lookup, words), translate(expr.high, lookup, words)
+    return summation(bound, low, high, substitute(body, {stand_in: bound}))
 
 
 def _compared(op: str, a: Term, b: Term) -> Term:
