@@ -1,293 +1,337 @@
-"""Random sheets as text: tariffs, routines of many shapes, and claims of which many are true and many are nearly so.
+"""Random sheets as text: programs with claims, of which many are true and many nearly so. Everything from one seed.
 
-Claims are fitted to runs from zero and then bent: by one, in their relation, in what they take for granted of the
-levels at the start. Everything comes from one seed.
+Claims are fitted to runs of the program without them, and then bent: by one, in their relation, in their condition, in
+what they take for granted of levels at the start.
 """
 
 from __future__ import annotations
 
 import random
-from collections.abc import Callable, Sequence
+import re
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
-from itertools import product
 
-from workbench.errors import UllageError
+from tests.soundness.fitting import Basis, Sample, fitted
+from tests.soundness.interpreter import Interpreter
+from tests.soundness.meaning import Meaning, NoValue, TooMuch, Value, fixed, of_sort
+from tests.soundness.programs import Place, Programs, Skeleton
 from workbench.library.loading import load_text
-from workbench.program.choosing import RandomChooser
-from workbench.program.priced import Program
-from workbench.program.pricing import price
-from workbench.program.running import Machine
+from workbench.sheet import tree
+from workbench.sheet.reader import read_formula
 
-GAUGES = ("stack", "heap")
-COUNTERS = ("time", "writes")
-SIZES = range(6)
-EVENTS = 4_000
+RUNS = 45  # that formulas are fitted to
+EVENTS = 2_500
+LEVELS: tuple[Value, ...] = (0, 1, -1, 7, Fraction(1, 2), Fraction(-9, 4), 100, -30)
+MOST_SAMPLES = 400
+MOST_CLAIMS = 7
 
-# What formulas are fitted with: text, and value for (n, frame).
-BASIS: tuple[tuple[str, Callable[[int, int], int]], ...] = (
-    ("1", lambda n, f: 1),
-    ("n", lambda n, f: n),
-    ("frame", lambda n, f: f),
-    ("n*frame", lambda n, f: n * f),
-    ("n^2", lambda n, f: n * n),
-    ("2^n", lambda n, f: 2**n),
-    ("n^2*frame", lambda n, f: n * n * f),
-    ("2^n*frame", lambda n, f: 2**n * f),
-    ("n*2^n", lambda n, f: n * 2**n),
-    ("n*2^n*frame", lambda n, f: n * 2**n * f),
-    ("n^3", lambda n, f: n**3),
-)
+
+def sheet_text(seed: int) -> str:
+    """A sheet with claims."""
+    rng = random.Random(seed)
+    while True:
+        skeleton = Programs(rng).skeleton()
+        sheet = readable(skeleton.text())
+        if sheet is not None:
+            return _Claims(rng, skeleton, sheet).text()
+
+
+def readable(text: str) -> tree.Sheet | None:
+    """The tree of a sheet's text; None where something is wrong with it."""
+    loaded = load_text("random.ullage", text)
+    return None if loaded.problems else loaded.sheet
+
+
+def open_constants(sheet: tree.Sheet) -> list[tree.Constant]:
+    """Constants that a run must be given values for."""
+    return [i for i in sheet.items if isinstance(i, tree.Constant) and i.value is None]
+
+
+def random_constants(sheet: tree.Sheet, rng: random.Random) -> dict[str, Value]:
+    """Values for the open constants that are of their types and meet their conditions."""
+    values: dict[str, Value] = {}
+    for item in open_constants(sheet):
+        for _ in range(50):
+            value = random_value(item.sort, rng)
+            meaning = Meaning(tree.Sheet(None, ()), {**values, item.name: value})
+            if item.condition is None or meaning.holds(item.condition, fixed(meaning.constants)):
+                values[item.name] = value
+                break
+    return values
+
+
+def random_value(sort: str, rng: random.Random) -> Value:
+    """Small, with edges."""
+    if sort == "bool":
+        return rng.random() < 0.5
+    value = rng.choice((0, 0, 1, 1, 2, 2, 3, 4, 5, 6, 7, 8))
+    if sort == "nat":
+        return value
+    signed = value if rng.random() < 0.75 else -value
+    return signed if sort == "int" or rng.random() < 0.6 else signed + Fraction(rng.choice((1, -1)), rng.choice((2, 3)))
+
+
+def random_entry(interpreter: Interpreter, rng: random.Random, from_zero: bool) -> dict[str, Value] | None:
+    """State variables as they must be, and counters, levels, peaks and areas: zero, or anything with peak >= level."""
+    entry: dict[str, Value] = {}
+    for _ in range(30):
+        entry = {s.name: random_value(s.sort, rng) for s in interpreter.states.values()}
+        look = fixed({**interpreter.meaning.constants, **entry})
+        conditions = [s.condition for s in interpreter.states.values() if s.condition is not None]
+        if all(interpreter.meaning.holds(c, look) for c in conditions):
+            break
+    else:
+        return None
+    if from_zero:
+        return entry
+    entry.update({c: rng.choice(LEVELS) for c in interpreter.counters})
+    for gauge, clock in interpreter.gauges.items():
+        level = rng.choice(LEVELS)
+        entry[gauge] = level
+        entry[f"{gauge}.peak"] = level + rng.choice((0, 0, 1, 12, 500))
+        if clock:
+            entry[f"{gauge}.area"] = rng.choice(LEVELS)
+    return entry
+
+
+def may_start(interpreter: Interpreter, routine: tree.Routine, start: Mapping[str, Value]) -> bool:
+    """Whether the routine's givens hold there; `with` names mean what they mean in it."""
+    table = {**interpreter.meaning.constants, **start}
+    try:
+        bound = {b.name: interpreter.meaning.value(b.value, fixed(table)) for b in routine.bindings}
+        return all(interpreter.meaning.holds(g.formula, fixed({**table, **bound})) for g in routine.header.givens)
+    except (NoValue, TooMuch):
+        return False
 
 
 @dataclass(frozen=True)
-class Sketch:
-    """A sheet without claims: its head, and routines in parts, so that claims can be put in later."""
+class _Aspect:
+    """Something to be claimed: its short form or name, and its value on a sample, None where that cannot be told."""
 
-    head: str
-    routines: tuple[tuple[str, str, str], ...]  # name, first line, rest from `is`
+    words: str
+    target: str
+    before: str
+    kind: str
 
-    def text(self, claims: dict[str, list[str]]) -> str:
-        parts = [self.head]
-        for name, first, rest in self.routines:
-            lines = "".join(f"  claim c{i}: {c}\n" for i, c in enumerate(claims.get(name, ())))
-            parts.append(f"{first}\n{lines}{rest}")
-        return "\n".join(parts)
+    def value(self, both: Mapping[str, Value]) -> Value | None:
+        end = both[f"{self.target}'"]
+        if self.kind == "name":
+            return end
+        if self.kind == "peak":
+            if end > both[self.target] or both[self.target] == both[self.before]:
+                return end - both[self.before]
+            return None
+        if self.kind == "area":
+            time = both[f"{self.words}'"] - both[self.words]
+            return end - both[self.target] - both[self.before] * time
+        return end - both[self.before]
 
 
-class Generator:
-    """Makes sheets; the same seed makes the same sheets."""
+class _Claims:
+    """Puts claims into a skeleton."""
 
-    def __init__(self, seed: int) -> None:
-        self.rng = random.Random(seed)
-        self.fresh = 0
+    def __init__(self, rng: random.Random, skeleton: Skeleton, sheet: tree.Sheet) -> None:
+        self.rng = rng
+        self.skeleton = skeleton
+        self.sheet = sheet
+        self.samples: dict[int, list[Sample]] = {p.line: [] for p in skeleton.places}
+        self.routines = [i for i in sheet.items if isinstance(i, tree.Routine)]
+        self.gauges: dict[str, str | None] = {}
+        self.meaning = Meaning(tree.Sheet(None, tuple(i for i in sheet.items if not isinstance(i, tree.Constant))), {})
 
-    # -------------------------------------------------------------- programs
-    def sketch(self) -> Sketch:
-        r = self.rng
-        head = ["constant frame: nat where frame >= 1", "constant step: nat = 3", "state level: nat where level <= 9"]
-        head += ["tariff t", "  counter time", "  counter writes"]
-        head += ["  gauge stack over time", f"  gauge heap{r.choice(['', ' over time', ' over writes'])}"]
-        if r.random() < 0.6:
-            head.append(
-                "  on call: " + r.choice(["hold frame stack", "spend 1 time, hold frame stack", "spend 2 time"])
-            )
-        if r.random() < 0.3:
-            head.append("  on declare: " + r.choice(["hold 4*size stack", "spend 1 time", "hold size heap"]))
-        if r.random() < 0.3:
-            head.append("  on assign: spend " + r.choice(["1 time", "step time", "2 writes"]))
-        if r.random() < 0.3:
-            head.append("  on test: spend " + r.choice(["1 time", "2 time"]))
-        head.append("end")
-        made = [self.routine(f"r{i}", [f"r{j}" for j in range(i)]) for i in range(r.choice((1, 1, 2, 3)))]
-        return Sketch("\n".join(head) + "\n", tuple(made))
+    def text(self) -> str:
+        for routine in self.routines:
+            for _ in range(RUNS):
+                self._sample(routine)
+        for _ in range(4):
+            text = self.skeleton.text([self._header(p) for p in self.skeleton.places])
+            if readable(text) is not None:
+                return text
+        return self.skeleton.text()
 
-    def routine(self, name: str, others: Sequence[str]) -> tuple[str, str, str]:
-        shape = self.rng.choice(
-            ("plain", "linear", "linear", "double", "half", "for", "for", "while", "nested", "stage")
-        )
-        self.fresh = 0
-        self.others = others
-        body = getattr(self, f"_{shape}")(name)
-        measure = "  measure n\n" if shape in ("linear", "double", "half") else ""
-        return name, f"routine {name}(n: nat)", f"{measure}is\n{body}end\n"
+    def _sample(self, routine: tree.Routine) -> None:
+        constants = random_constants(self.sheet, self.rng)
+        try:
+            interpreter = Interpreter(self.sheet, constants)
+        except (NoValue, KeyError):
+            return
+        self.gauges = interpreter.gauges
+        entry = random_entry(interpreter, self.rng, from_zero=True)
+        arguments = {p.name: random_value(p.sort, self.rng) for p in routine.parameters}
+        if entry is None or not may_start(interpreter, routine, {**entry, **arguments, "stack": 0}):
+            return
+        run = interpreter.run(routine.name, arguments, entry, self.rng.randrange(10**6), EVENTS)
+        for a in run.activations if run.ended else ():
+            both = {**interpreter.meaning.constants, **a.start, **{f"{k}'": v for k, v in a.end.items()}}
+            if a.line in self.samples and len(self.samples[a.line]) < MOST_SAMPLES:
+                self.samples[a.line].append(Sample({**interpreter.meaning.constants, **a.start}, both))
 
-    def _plain(self, name: str) -> str:
-        return self.block(3, ["n"], "  ")
+    # -------------------------------------------------------------- headers
+    def _header(self, place: Place) -> list[str]:
+        samples = list(self.samples[place.line])
+        self.rng.shuffle(samples)
+        inner = place.kind != "routine"
+        lines: list[str] = []
+        if inner and self.rng.random() < 0.5:
+            lines += [f"given {g}" for g in self._givens(place, samples)]
+        claims: list[str] = []
+        for aspect in self._aspects(place, samples):
+            if inner and self.rng.random() < 0.2:
+                continue
+            claims += self._claims_of(aspect, place, samples)
+        if not inner:
+            self.rng.shuffle(claims)
+            claims = claims[:MOST_CLAIMS]
+        for c in claims:
+            lines.append(f"claim {c}")
+            lines += self._hints(place)
+        return [f"    {x}" for x in lines]
 
-    def _linear(self, name: str) -> str:
-        before, after = self.block(1, ["n"], "    "), self.block(1, ["n"], "    ")
-        call = f"    {name}(n - 1)\n"
-        if self.rng.random() < 0.3:
-            call = f"    hold {self.amount(['n'])} {self.gauge()} do\n      {name}(n - 1)\n    end\n"
-        last = f"  else\n{self.block(1, [], '    ')}" if self.rng.random() < 0.4 else ""
-        return f"  if n > 0 then\n{before}{call}{after}{last}  end\n"
+    def _hints(self, place: Place) -> list[str]:
+        if self.rng.random() > 0.08:
+            return []
+        numbers = [n.name for n in place.names if n.sort == "nat"] or ["0"]
+        a = self.rng.choice(numbers)
+        laws = [f"using {law}({a})" for law, _ in self.skeleton.laws]
+        return [f"  {self.rng.choice([*laws, *laws, f'cases {a} = 0', f'cases {a} mod 2 = 0', f'cases lg({a}) > 1'])}"]
 
-    def _double(self, name: str) -> str:
-        middle = self.block(1, [], "    ")
-        return f"  if n > 0 then\n    {name}(n - 1)\n{middle}    {name}(n - 1)\n  end\n"
+    def _givens(self, place: Place, samples: Sequence[Sample]) -> list[str]:
+        """What held at every start, and now and then something that did not."""
+        numbers = [n.name for n in place.names if n.sort != "bool"]
+        options = [f"{v} >= {k}" for v in numbers for k in (0, 1)]
+        options += [f"{v} <= {w}" for v in numbers for w in numbers if v != w]
+        true = [g for g in options if self._held(g, samples)]
+        chosen = self.rng.sample(true, min(len(true), self.rng.choice((1, 2, 3))))
+        if options and self.rng.random() < 0.12:
+            chosen.append(self.rng.choice(options))
+        return chosen
 
-    def _half(self, name: str) -> str:
-        return f"  if n > 0 then\n{self.block(1, ['n'], '    ')}    {name}(n div 2)\n  end\n"
+    def _held(self, formula: str, samples: Sequence[Sample]) -> bool:
+        read = read_formula(formula)
+        try:
+            return all(self.meaning.holds(read, fixed(s.start)) for s in samples)
+        except (NoValue, TooMuch, KeyError):
+            return False
 
-    def _for(self, name: str) -> str:
-        low, word, high = self.rng.choice(
-            (("0", "below", "n"), ("1", "to", "n"), ("0", "to", "n"), ("1", "below", "n"))
-        )
-        return f"  for i from {low} {word} {high} do\n{self.block(2, ['n', 'i'], '    ')}  end\n"
-
-    def _nested(self, name: str) -> str:
-        high = self.rng.choice(("i", "n"))
-        inner = f"    for j from 1 to {high} do\n{self.block(1, ['i', 'j'], '      ')}    end\n"
-        return f"  for i from 1 to n do\n{inner}{self.block(1, ['i'], '    ')}  end\n"
-
-    def _while(self, name: str) -> str:
-        r = self.rng
-        cost = r.choice((1, 2, 5))
-        claim = r.choice((f"spent time = {cost}*left", f"spent time <= {cost}*left + 1", f"spent time >= {cost}*left",
-                          f"spent time = {cost + 1}*left", f"spent time <= {cost + 3}*left + 2"))  # fmt: skip
-        extra = r.choice(("", "    claim net stack = 0\n", "    claim peak stack = 4\n", "    claim left' = 0\n"))
-        down = r.choice(("left - 1", "left - 1", "left - 1", "left div 2", "left - 2"))
-        inside = r.choice((f"    spend {cost} time\n", f"    hold 4 stack do spend {cost} time end\n"))
-        return (
-            f"  var left: nat := n\n  while left > 0\n    claim {claim}\n{extra}"
-            f"    measure left\n  do\n    left := {down}\n{inside}  end\n"
-        )
-
-    def _stage(self, name: str) -> str:
-        r = self.rng
-        claims = r.sample(("spent time <= 7*n", "spent time = 2*n", "net stack = 0", "kept' <= n", "peak stack = 4"), 2)
-        lines = "".join(f"    claim {c}\n" for c in claims)
-        return (
-            f"  stage s\n{lines}  is\n    var kept: nat\n    kept := any where kept <= n\n"
-            f"{self.block(1, ['n'], '    ')}  end\n  spend kept time\n{self.block(1, ['n'], '  ')}"
-        )
-
-    def block(self, length: int, names: Sequence[str], indent: str) -> str:
-        return "".join(self.statement(names, indent, 2) for _ in range(self.rng.randint(1, length)))
-
-    def statement(self, names: Sequence[str], indent: str, depth: int) -> str:
-        r = self.rng
-        kind = r.choice(("spend", "spend", "hold", "acquire", "if", "either", "var", "any", "call", "state", "loop"))
-        amount = self.amount(names)
-        if kind == "hold" and depth:
-            inside = self.statement(names, indent + "  ", depth - 1)
-            return f"{indent}hold {amount} {self.gauge()} do\n{inside}{indent}end\n"
-        if kind == "acquire":
-            gauge = self.gauge()
-            given_back = r.choice((amount, amount, self.amount(names)))
-            return f"{indent}acquire {amount} {gauge}\n{indent}spend 1 time\n{indent}release {given_back} {gauge}\n"
-        if kind == "if" and depth:
-            test = r.choice(("n > 2", "n mod 2 = 0", "n = 0", "level > 4", "frame > n"))
-            other = f"{indent}else\n{self.statement(names, indent + '  ', depth - 1)}" if r.random() < 0.6 else ""
-            return f"{indent}if {test} then\n{self.statement(names, indent + '  ', depth - 1)}{other}{indent}end\n"
-        if kind == "either" and depth:
-            first, second = (self.statement(names, indent + "  ", depth - 1) for _ in range(2))
-            return f"{indent}either\n{first}{indent}else\n{second}{indent}end\n"
-        if kind == "var":
-            name = self.name()
-            return (
-                f"{indent}var {name}: nat size {r.choice(('1', 'n', '3'))} := {amount}\n{indent}spend {name} writes\n"
-            )
-        if kind == "any":
-            name = self.name()
-            return (
-                f"{indent}var {name}: nat\n{indent}{name} := any where {name} <= {amount}\n{indent}spend {name} time\n"
-            )
-        if kind == "call" and self.others:
-            return f"{indent}{r.choice(self.others)}({r.choice(('n', 'n + 1', '2', 'n div 2'))})\n"
-        if kind == "state":
-            return f"{indent}level := {r.choice(('0', 'min(9, level + 1)', 'level div 2', '9 - level', 'level - 1'))}\n"
-        if kind == "loop" and depth:
-            name = self.name()
-            high = r.choice(("n", "3", "frame"))
-            return f"{indent}for {name} from 1 to {high} do\n{indent}  spend 1 time\n{indent}end\n"
-        return f"{indent}spend {amount} {r.choice(COUNTERS)}\n"
-
-    def amount(self, names: Sequence[str]) -> str:
-        r = self.rng
-        plain = ["1", "2", "5", "frame", "step", "7 div 2", "max(2, frame)"]
-        for n in names:
-            plain += [n, f"2*{n}", f"{n} + 1", f"{n}*frame", f"{n} div 2", f"max({n}, 3)", f"lg({n} + 1)"]
-            plain += [f"{n} - 1"] if r.random() < 0.2 else []
-        return r.choice(plain)
-
-    def gauge(self) -> str:
-        return self.rng.choice(GAUGES)
-
-    def name(self) -> str:
-        self.fresh += 1
-        return f"x{self.fresh}"
+    def _aspects(self, place: Place, samples: Sequence[Sample]) -> list[_Aspect]:
+        found = [_Aspect("spent time", "time", "time", "rise"), _Aspect("spent writes", "writes", "writes", "rise")]
+        for g, clock in self.gauges.items():
+            found += [_Aspect(f"net {g}", g, g, "rise"), _Aspect(f"peak {g}", f"{g}.peak", g, "peak")]
+            if clock:
+                found.append(_Aspect(clock, f"{g}.area", g, "area"))
+        inner = place.kind != "routine"
+        states = [i.name for i in self.sheet.items if isinstance(i, tree.State)]
+        found += [_Aspect(f"{n.name}'", n.name, n.name, "name") for n in place.names
+                  if ((inner and not n.fixed) or n.name in states) and n.name != "result"]  # fmt: skip
+        found += [_Aspect(f"{s}'", s, s, "name") for s in states if s not in [n.name for n in place.names]]
+        if place.result:
+            found.append(_Aspect("result", "result", "result", "name"))
+        # What nothing changed need not be claimed.
+        return [a for a in found if not samples or any(s.both.get(f"{a.target}'") != s.both.get(a.target)
+                for s in samples) or self.rng.random() < 0.1]  # fmt: skip
 
     # -------------------------------------------------------------- claims
-    def sheet(self) -> str:
-        """A sheet with claims."""
-        while True:
-            sketch = self.sketch()
-            text = sketch.text({})
-            program = priced(text)
-            if program is not None:
-                return sketch.text({name: self.claims(program, name) for name, _, _ in sketch.routines})
-
-    def claims(self, program: Program, routine: str) -> list[str]:
-        machine = Machine(program)
-        samples: dict[tuple[int, int], list[dict[str, Fraction]]] = {}
-        for n, frame in product(SIZES, (1, 2, 5)):
-            for seed in range(3):
-                values = {"n": n, "frame": frame, "level": seed * 3}
-                try:
-                    run = machine.run(routine, values, chooser=RandomChooser(seed), event_limit=EVENTS)
-                except UllageError:
-                    continue
-                if run.complete and not run.faults:
-                    found = {f"{k} {x}": Fraction(v) for k in ("spent", "net", "peak", "area")
-                             for x, v in getattr(run, k).items()}  # fmt: skip
-                    samples.setdefault((n, frame), []).append(found)
-        made: list[str] = []
-        aspects = sorted({a for runs in samples.values() for run in runs for a in run})
-        for aspect in aspects:
-            made += self._claims_of(aspect, {key: [run[aspect] for run in runs] for key, runs in samples.items()})
-        self.rng.shuffle(made)
-        return made[:10]
-
-    def _claims_of(self, aspect: str, values: dict[tuple[int, int], list[Fraction]]) -> list[str]:
-        r = self.rng
-        exact = {key: v[0] for key, v in values.items() if len(set(v)) == 1}
-        formula = fitted(exact) if len(exact) == len(values) else None
+    def _claims_of(self, aspect: _Aspect, place: Place, samples: Sequence[Sample]) -> list[str]:
+        known = []
+        for s in samples:
+            value = aspect.value(s.both) if f"{aspect.target}'" in s.both else None
+            if value is not None:
+                known.append((s.start, value))
+        words = f"area {aspect.before}" if aspect.kind == "area" else aspect.words
+        if not known:
+            return [f"{words} = 0"] if aspect.kind != "name" else []
+        if all(isinstance(v, bool) for _, v in known):
+            return [f"{words} = {self.rng.choice(('true', 'false', 'not ' + aspect.target))}"]
+        basis = self._basis(place, known)
+        formula = fitted(known, basis, self.meaning)
+        made = self._exact(words, formula, aspect, place) if formula is not None else self._bounds(words, known, basis)
         if formula is None:
-            high = max(max(v) / (key[0] * key[1] + 1) for key, v in values.items())
-            bound = f"{-(-high // 1)}*(n*frame + 1)"
-            return [f"{aspect} <= {bound}", f"{aspect} >= 0", r.choice((f"{aspect} <= {bound} - 1", f"{aspect} >= 1"))]
-        kind, name = aspect.split()
-        claims = [f"{aspect} = {formula}"]
-        claims.append(r.choice((f"{aspect} <= {formula}", f"{aspect} >= {formula}", f"{aspect} <= {formula} + n")))
-        bent = [f"{aspect} = {formula} + 1", f"{aspect} <= {formula} - 1", f"{aspect} >= {formula} + 1",
-                f"n > 0 implies {aspect} = {formula}", f"n > 3 implies {aspect} <= {formula} - n + 4"]  # fmt: skip
-        target = {"spent": name, "net": name, "peak": f"{name}.peak", "area": f"{name}.area"}[kind]
-        bent += [f"{target}' = {formula}", f"{target}' = {target} + ({formula})", f"{target}' >= {target}"]
-        if kind == "area" and name == "stack":
-            bent += ["mean stack <= n*frame + 7", "mean stack <= frame", "mean stack >= 0"]
-        return [*claims, r.choice(bent), r.choice(bent)]
+            made += self._partial(words, known, basis, place)
+        return made
 
+    def _basis(self, place: Place, known: Sequence[tuple[Mapping[str, Value], Value]]) -> Basis:
+        numbers = [n.name for n in place.names if n.sort in ("nat", "int", "real") and n.name in known[0][0]]
+        numbers = numbers if len(numbers) <= 4 else self.rng.sample(numbers, 4)
+        powers = [v for v in numbers if all(of_sort(s[v], "nat") and s[v] <= 12 for s, _ in known)][:2]
+        flags = [n.name for n in place.names if n.sort == "bool"][:1]
+        constants = [c.name for c in open_constants(self.sheet)]
+        return Basis.over(numbers, flags, constants, powers)
 
-def priced(text: str) -> Program | None:
-    """The program of a sheet's text; None where it cannot be read."""
-    loaded = load_text("random.ullage", text)
-    if loaded.sheet is None or loaded.problems:
-        return None
-    return price(loaded.path, loaded.sheet, loaded.used)
+    def _exact(self, words: str, formula: str, aspect: _Aspect, place: Place) -> list[str]:
+        r = self.rng
+        inner = place.kind != "routine"
+        claims = [f"{words} = {formula}"]
+        if r.random() < 0.4:
+            claims.append(r.choice((f"{words} <= {formula}", f"{words} >= {formula}", f"{words} <= {formula} + 1")))
+        if inner and r.random() < 0.8:
+            return claims[:1]
+        bent = self._bent(words, formula, aspect, place)
+        chosen = r.sample(bent, 2)
+        return [r.choice(chosen)] if inner and r.random() < 0.5 else [*claims, *chosen]
 
+    def _bent(self, words: str, formula: str, aspect: _Aspect, place: Place) -> list[str]:
+        numbers = [n.name for n in place.names if n.sort in ("nat", "int")] or ["0"]
+        v, w = self.rng.choice(numbers), self.rng.choice(numbers)
+        end, start, g = f"{aspect.target}'", aspect.target, aspect.before
+        swapped = " ".join({v: w, w: v}.get(x, x) for x in formula.replace("*", " * ").replace("^", " ^ ").split())
+        stepped = re.sub(rf"\b{v}\b", f"({v} + 1)", formula)
+        bent = [
+            f"{words} = {formula} + 1", f"{words} <= {formula} - 1", f"{words} >= {formula} + 1",
+            f"{words} >= {formula} - 1", f"{words} = {swapped}", f"{words} = {stepped}", f"{words} <= {stepped}",
+            f"{v} > 0 implies {words} = {formula}", f"{v} > 3 implies {words} <= {formula} - {v} + 4",
+            f"{v} = 0 implies {words} = 0", f"{words} = if {v} > 1 then {formula} else 0",
+            f"{words} = {formula} or {words} = {formula} + {v}", f"not {words} = {formula} + 1",
+            f"{words} <= max({formula}, {v})", f"{words} >= min({formula}, {v})", f"{words} <= abs({formula})",
+            f"{end} = {formula}", f"{end} >= {start}", f"{end} = {start} + ({formula})", f"{end} <= {formula} + 2",
+            f"({formula})*({formula} - 1) >= 0", f"lg({formula}) >= 0", f"{words} = ({formula})*{v}/{v}",
+            f"{v} != 0 implies {words} = ({formula})*{v}/{v}", f"{words} = ({formula})*2 div 2",
+            f"{words} = floor({formula})", f"stack.peak' <= heap.peak' + ({formula})",
+            f"stack.peak' - stack.peak <= {formula}", "heap' <= heap.peak'", f"stack' = stack.peak' - ({formula})",
+            f"{words} = {formula} and {end} >= {start}", f"{v} + 1 > 0 implies {words} >= sum(1 for q from 1 to {v})",
+        ]  # fmt: skip
+        if aspect.kind == "peak":
+            bent += [f"{end} = max({start}, {g} + ({formula}))", f"{end} <= {start} + ({formula})"]
+        if aspect.kind == "area":
+            bent += [f"mean {g} <= {formula}", f"mean {g} = {formula}", f"mean {g} >= 0", f"mean {g} <= frame*{v}"]
+            bent += [f"{end} = {start} + ({formula})"] * 2
+        return bent
 
-def fitted(values: dict[tuple[int, int], Fraction]) -> str | None:
-    """A combination of the basis that has exactly these values, with the fewest functions from its front."""
-    if len(values) < 8:
-        return None
-    for size in (3, 6, 8, len(BASIS)):
-        found = _solved(values, size)
-        if found is not None:
-            parts = [f"({c})*{text}" if c != 1 else text for c, (text, _) in zip(found, BASIS, strict=False) if c]
-            return " + ".join(parts) or "0"
-    return None
+    def _bounds(self, words: str, known: Sequence[tuple[Mapping[str, Value], Value]], basis: Basis) -> list[str]:
+        """Bounds by the samples: a whole number times something that grows."""
+        r = self.rng
+        texts = [t for t, _ in basis.parts[: basis.sizes[1]]]
+        shape = f"({r.choice(texts)} + {r.choice(texts)} + 1)"
+        read = read_formula(shape)
+        factors = []
+        for start, value in known:
+            try:
+                size = self.meaning.value(read, fixed({**self.meaning.constants, **start}))
+            except (NoValue, TooMuch, KeyError):
+                continue
+            if size > 0:
+                factors.append(Fraction(value) / size)
+        if not factors:
+            return []
+        high, low = -int(-max(factors) // 1), int(min(factors) // 1)
+        claims = [f"{words} <= ({high})*{shape}", f"{words} >= ({low})*{shape}"]
+        bent = (f"{words} <= ({high})*{shape} - 1", f"{words} >= ({low})*{shape} + 1", f"{words} >= 0")
+        claims.append(r.choice(bent))
+        return claims
 
-
-def _solved(values: dict[tuple[int, int], Fraction], size: int) -> list[Fraction] | None:
-    """Gauss's elimination, exactly."""
-    rows = [[Fraction(f(*key)) for _, f in BASIS[:size]] + [v] for key, v in values.items()]
-    pivots: list[int] = []
-    for column in range(size):
-        at = next((i for i in range(len(pivots), len(rows)) if rows[i][column]), None)
-        if at is None:
-            continue
-        place = len(pivots)
-        rows[place], rows[at] = rows[at], rows[place]
-        rows[place] = [x / rows[place][column] for x in rows[place]]
-        for i in range(len(rows)):
-            if i != place and rows[i][column]:
-                rows[i] = [x - rows[i][column] * y for x, y in zip(rows[i], rows[place], strict=True)]
-        pivots.append(column)
-    if any(row[-1] for row in rows[len(pivots) :]):
-        return None
-    solution = [Fraction(0)] * size
-    for i, column in enumerate(pivots):
-        solution[column] = rows[i][-1]
-    return solution
+    def _partial(
+        self, words: str, known: Sequence[tuple[Mapping[str, Value], Value]], basis: Basis, place: Place
+    ) -> list[str]:
+        """Formulas for a part of the values at the start."""
+        numbers = [n.name for n in place.names if n.sort in ("nat", "int")]
+        tests = [f"{v} > 0" for v in numbers] + [f"{v} = 0" for v in numbers] + [f"{v} > 2" for v in numbers]
+        tests += [n.name for n in place.names if n.sort == "bool"] + [f"{v} mod 2 = 0" for v in numbers]
+        claims = []
+        for test in self.rng.sample(tests, min(3, len(tests))):
+            read = read_formula(test)
+            part = [(s, v) for s, v in known if self.meaning.holds(read, fixed(s))]
+            formula = fitted(part, basis, self.meaning)
+            if formula is not None:
+                extra = self.rng.choice(("", "", "", " + 1", " - 1"))
+                claims.append(f"{test} implies {words} = {formula}{extra}")
+        return claims
